@@ -62,6 +62,14 @@ struct plan_block {
     struct plan_recount recount;
 };
 
+/* The best length of one ramp shape, as tried on the first scored contraction: the losers beside the winner. */
+struct plan_ramp_trial {
+    enum ramp_shape shape;
+    double ms, rise_ms, overshoot_percent, outside_n_s; /* outside_n_s: force-time integral outside the hold */
+    bool chosen;
+};
+enum { PLAN_RAMP_TRIALS_MAX = 3, PLAN_NOTES_MAX = 8 };
+
 struct plan_channel {
     unsigned channel;
     char muscle[NAME_SIZE];
@@ -73,7 +81,12 @@ struct plan_channel {
     double force_cap_n; /* NAN: none */
     double comfort_ma;  /* NAN: none */
     double start_ms;
-    size_t blocks;
+    /* Several muscles: each channel's own demand and target. In a plan of one channel they equal the plan's. */
+    struct demand demand;
+    double target_n;        /* NAN: none (a compiled train) */
+    size_t ramp_trials;     /* 0 where none were tried (a compiled train) */
+    struct plan_ramp_trial ramp_trial[PLAN_RAMP_TRIALS_MAX];
+    size_t blocks; /* 0 where not even one contraction can be given within the limits */
     struct plan_block *block;
 };
 
@@ -82,8 +95,9 @@ struct plan {
     char goal[LINE_SIZE];
     char program[NAME_SIZE]; /* name and version that made it */
     char profile_digest[2 * DIGEST_SIZE + 1], demand_digest[2 * DIGEST_SIZE + 1], stimulator_digest[2 * DIGEST_SIZE + 1];
-    struct demand demand; /* as planned; target resolved below */
-    double target_n;
+    struct demand demand; /* as planned, of the first channel; target resolved below. contractions 0: a compiled train, no demand */
+    double target_n;      /* NAN: none */
+    uint32_t common_period_us; /* channels that take turns; 0: none */
     struct stimulator stimulator;
     size_t channels;
     struct plan_channel *channel;
@@ -101,6 +115,8 @@ struct plan {
         unsigned most_contractions;
     } would_work;
     char as_found[16]; /* found.as of the profile: "single" | "train" | "" */
+    size_t notes;      /* lines for a person: an old profile, no uncertainty, ... */
+    char note[PLAN_NOTES_MAX][LINE_SIZE];
 };
 
 enum status plan_parse(const struct document_bytes *bytes, struct plan *plan, struct message *why);
