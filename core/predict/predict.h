@@ -37,14 +37,15 @@ double predictor_force_remaining(const struct predictor *predictor, double frequ
 
 /* Measures of one contraction's hold, from F(t + delay) so that they line up with the pulses. */
 struct hold_measures {
-    double mean_n, peak_n, first_quarter_n, last_quarter_n;
-    double ripple_percent, droop_percent, overshoot_percent; /* overshoot over target_n; NAN where target is NAN */
+    double mean_n, peak_n, first_quarter_n, last_quarter_n; /* tone included; the quarters NAN without a whole period */
+    /* ripple and droop NAN without a whole period; droop is a magnitude (the quarters have the sign); overshoot NAN where the target is */
+    double ripple_percent, droop_percent, overshoot_percent;
     double rise_ms;                                           /* NAN where the hold never settles */
-    double force_time_integral_outside_n_s;                   /* ramps: outside the hold, tone aside */
+    double force_time_integral_outside_n_s;                   /* ramps: outside the hold, first to last pulse, tone aside */
     unsigned periods;                                         /* whole periods in the hold */
 };
 struct hold_window {
-    double ramp_up_ms, hold_ms; /* from the contraction's first pulse */
+    double ramp_up_ms, hold_ms; /* from the contraction's first pulse given: less contraction_skipped_ms where ramps begin too weak */
     double target_n, tolerance_percent;
 };
 /* Gives the contraction's pulses to the predictor (times from start_ms, which is at or after the present time), measures its
@@ -57,13 +58,16 @@ struct trace_options {
     bool exact;
     double step_ms;  /* 1 */
     double until_ms; /* NAN: last pulse + 1000 */
-    double window_from_ms, window_to_ms; /* NAN: the second half from first to last pulse */
+    double window_from_ms, window_to_ms; /* on the pulses' time; NAN: the second half from first to last pulse */
+    const bool *same_period; /* a pulse: it belongs to the period of the pulse before (openings, pairs). NULL: told from the gaps */
 };
 struct trace {
     size_t samples;
     double *time_ms, *force_n, *capacity, *potentiation, *force_remaining_20, *force_remaining_50, *activation;
     bool bound_A, bound_tau1; /* a state stopped at its bound: warn */
 };
+/* Peak and integral are those of the force as a recording shows it, between samples too; time to peak runs from the first pulse;
+ * mean and ripple are of the window; NAN where there is nothing to measure. */
 struct trace_summary {
     double peak_n, time_to_peak_ms, half_relaxation_ms, mean_n, ripple_percent, fusion_index, force_time_integral_n_s;
     double capacity_end, potentiation_end, force_remaining_20_end, force_remaining_50_end, window_ms[2];

@@ -53,6 +53,17 @@ double ramp_value(enum ramp_shape shape, unsigned i, unsigned n);
 /* period = ceil(10^6 / pps) us. */
 uint32_t train_period_us(double frequency_pps);
 
+/* Periods of a regular contraction on its grid (the opening counts as one, a pair as one), and where period k starts. */
+struct contraction_periods {
+    uint32_t ramp_up, hold, ramp_down;
+};
+struct contraction_periods contraction_count(const struct contraction *contraction);
+double contraction_period_start_ms(const struct contraction *contraction, uint32_t k);
+/* How long the grid runs before the first pulse given, in ms: the beginning of a ramp that is below the stimulator's `from` gives no
+ * pulse and the contraction starts at the first pulse given, so its hold runs from ramp_up.ms - this. 0 with no stimulator (grid NULL).
+ * Of a compiled contraction. */
+double contraction_skipped_ms(const struct contraction *contraction, const struct train_grid *grid);
+
 /* Exact pulses of one contraction (no stimulator: settings unrounded, ramps by their formula), the first at 0 ms.
  * `pulses` holds `capacity`; *count is what is needed, also where it is more than capacity (then STATUS_REFUSED). */
 enum status contraction_pulses(const struct contraction *contraction, const struct recruitment *recruitment,
@@ -61,6 +72,14 @@ enum status contraction_pulses(const struct contraction *contraction, const stru
 /* Compiles both ramps into their straight pieces (at most RAMP_PIECES_MAX each), written into `contraction`. */
 enum status contraction_compile_ramps(struct contraction *contraction, const struct recruitment *recruitment,
                                       const struct train_grid *grid, struct message *why);
+
+/* Pulses of many contractions one after another (each repeated, rest_ms from its last pulse to the next first one), the first at 0 ms.
+ * grid NULL: exact, else compiled on the grid (the contractions' ramps are compiled here, on copies). *pulses is malloc'ed; *same_period
+ * too (same_period may be NULL): a pulse belongs to the period of the one before it. hold_ms: the first contraction's hold, from and to
+ * (NAN for free gaps); may be NULL. More than pulses_max is refused. */
+enum status contraction_list_pulses(const struct contraction *list, size_t contractions, const struct recruitment *recruitment,
+                                    const struct train_grid *grid, size_t pulses_max, struct train_pulse **pulses,
+                                    bool **same_period, size_t *count, double hold_ms[2], struct message *why);
 
 /* Segments of one regular contraction from its pieces; start_us is the first pulse given. Regular: at most CONTRACTION_SEGMENTS_MAX,
  * free gaps: at most gaps + 1. *last_pulse_us is the time of the last pulse given (rest runs from there). */

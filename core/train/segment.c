@@ -4,10 +4,9 @@
  * stays below 2^48. Method: this project's (house chapter, "Trains"). */
 #include "core/train/segment.h"
 
-#include <assert.h>
 #include <stddef.h>
 
-static_assert(sizeof(((struct segment *)NULL)->count) == 2, "the products below rely on 16-bit counts");
+_Static_assert(sizeof(((struct segment *)NULL)->count) == 2, "the products below rely on 16-bit counts");
 
 /* Pulses that stand for the first period: the opening, or the first pair where that is longer. */
 static uint32_t opening_pulses(const struct segment *segment)
