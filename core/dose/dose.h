@@ -64,9 +64,11 @@ enum { DOSE_WINDOW_PULSES = 256, DOSE_SLEW_SLOTS = 21, DOSE_TRAIN_SILENCE_US = 2
 /* One channel's memory. Plain data; zero it with dose_init. Never cleared while the device is powered. */
 struct dose_channel {
     bool any;
-    uint64_t first_us, last_us, train_first_us, on_total_us;
+    bool in_session;
+    uint8_t train_extras; /* opening extras of the present train that the rate does not count */
+    uint16_t last_duration_us;
+    uint64_t last_us, train_first_us, on_total_us; /* on_total_us: of the trains that ended in this session */
     uint64_t session_start_us, session_pulses, session_charge_pc;
-    uint32_t last_pc;
     struct {
         uint64_t at_us;
         uint32_t current_ua;
@@ -89,6 +91,10 @@ void dose_init(struct dose_channel *channel);
 void dose_session(struct dose_channel *channel, uint64_t now_us, uint64_t pulses, uint64_t charge_pc);
 /* Would this pulse be within every limit? Changes nothing. A pulse of zero current is silence: within. */
 struct dose_verdict dose_check(const struct dose_limits *limits, const struct dose_channel *channel, const struct pulse *pulse);
+/* Every figure as it would stand after this pulse, and its limit (that of slew depends on the moment), in the units of the
+ * comparison: uA, us, pC, uA, pulses, us, uJ, mV, nA, us, permille, pC, us, pulses, pC. The ledger shows these. */
+void dose_measure(const struct dose_limits *limits, const struct dose_channel *channel, const struct pulse *pulse,
+                  uint64_t value[DOSE_FIGURES], uint64_t limit[DOSE_FIGURES]);
 /* The greatest charge that slew allows for a pulse at at_us (ease lowers to it). */
 uint32_t dose_slew_allowed_pc(const struct dose_limits *limits, const struct dose_channel *channel, uint64_t at_us);
 /* Notes a pulse as given. */
