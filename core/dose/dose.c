@@ -135,6 +135,16 @@ static uint64_t pulse_length_us(const struct dose_limits *limits, uint32_t durat
     return duration_us + limits->interphase_us + second;
 }
 
+/* On-time of the newest train up to until_us; one that began before the session counts from the session's
+ * start. */
+static uint64_t train_on_us(const struct dose_channel *channel, uint64_t until_us)
+{
+    if (!channel->any || !channel->in_session) return 0;
+    const uint64_t start_us = channel->session_start_us;
+    const uint64_t from_us = channel->train_first_us > start_us ? channel->train_first_us : start_us;
+    return until_us > from_us ? until_us - from_us : 0;
+}
+
 static void measure_times(const struct dose_limits *limits, const struct dose_channel *channel,
                           const struct pulse *pulse, uint64_t value[DOSE_FIGURES],
                           uint64_t limit[DOSE_FIGURES])
@@ -145,12 +155,9 @@ static void measure_times(const struct dose_limits *limits, const struct dose_ch
     const bool goes_on = train_goes_on(channel, pulse->at_us);
     value[DOSE_ON_TIME] = goes_on ? pulse->at_us - channel->train_first_us : 0;
     limit[DOSE_ON_TIME] = limits->on_us;
-    const uint64_t start_us = channel->in_session ? channel->session_start_us : pulse->at_us;
-    const uint64_t session_us = pulse->at_us - start_us;
-    /* a train that began before the session counts from the session's start */
-    const uint64_t from_us =
-        goes_on && channel->train_first_us > start_us ? channel->train_first_us : start_us;
-    const uint64_t on_us = channel->on_total_us + (goes_on ? pulse->at_us - from_us : 0);
+    const uint64_t session_us = channel->in_session ? pulse->at_us - channel->session_start_us : 0;
+    const uint64_t on_us =
+        channel->on_total_us + train_on_us(channel, goes_on ? pulse->at_us : channel->last_us);
     value[DOSE_DUTY] = session_us >= DUTY_AFTER_US ? up(on_us * 1000, session_us) : 0;
     limit[DOSE_DUTY] = limits->duty_permille;
     value[DOSE_SESSION_TIME] = session_us;
@@ -234,10 +241,7 @@ void dose_given(struct dose_channel *channel, const struct pulse *pulse)
     if (!channel->in_session)
         dose_session(channel, pulse->at_us, channel->session_pulses, channel->session_charge_pc);
     if (!train_goes_on(channel, pulse->at_us)) {
-        const uint64_t from_us = channel->train_first_us > channel->session_start_us
-                                     ? channel->train_first_us
-                                     : channel->session_start_us;
-        if (channel->any && channel->last_us > from_us) channel->on_total_us += channel->last_us - from_us;
+        channel->on_total_us += train_on_us(channel, channel->last_us);
         channel->train_first_us = pulse->at_us;
         channel->train_extras = 0;
     }
