@@ -79,6 +79,7 @@ struct plan_channel {
     struct dose_limits limits; /* the effective ones, written in documents' units */
     const char *limit_source[DOSE_FIGURES]; /* "person" | "stimulator" | "program" */
     double force_cap_n; /* NAN: none */
+    double force_edge_n; /* recount: greatest upper 95 % edge of the ensemble's peak (without uncertainty the peak itself) */
     double comfort_ma;  /* NAN: none */
     double start_ms;
     /* Several muscles: each channel's own demand and target. In a plan of one channel they equal the plan's. */

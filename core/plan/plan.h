@@ -17,16 +17,28 @@ struct plan_options {
     double *seconds;   /* NULL, or where the caller's clock stands; core reads none */
 };
 
-/* Makes a plan. STATUS_OK: met in full. STATUS_REFUSED with plan->channels > 0: written all the same, it says what fails first.
- * STATUS_REFUSED with plan->channels == 0: nothing could be made (why says it). hookup may be NULL (channel 1). Free with plan_free. */
-enum status plan_make(const struct profile *profile, const struct demand *demand, const struct stimulator *stimulator,
-                      const struct hookup *hookup, const struct plan_options *options, struct plan *plan, struct message *why);
+/* Makes a plan. STATUS_OK: met in full. STATUS_REFUSED with plan->channels > 0: written all the same, it says
+ * what fails first. STATUS_REFUSED with plan->channels == 0: nothing could be made (why says it). hookup may
+ * be NULL (channel 1). Free with plan_free. */
+enum status plan_make(const struct profile *profile, const struct demand *demand,
+                      const struct stimulator *stimulator, const struct hookup *hookup,
+                      const struct plan_options *options, struct plan *plan, struct message *why);
+/* Several muscles, a demand each (each with its own start_ms). Channels that share a return, and all channels
+ * of a stimulator that gives one pulse at a time, take one common period, a slot each. Otherwise as
+ * plan_make. */
+enum status plan_make_group(const struct profile *profile, const struct demand *demands, size_t count,
+                            const struct stimulator *stimulator, const struct hookup *hookup,
+                            const struct plan_options *options, struct plan *plan, struct message *why);
 /* Every figure anew from the plan's blocks as they stand. */
-enum status plan_recount(struct plan *plan, const struct profile *profile, const struct plan_options *options, struct message *why);
+enum status plan_recount(struct plan *plan, const struct profile *profile, const struct plan_options *options,
+                         struct message *why);
 /* All segments of a plan, sorted by start; *segments is malloc'ed. */
-enum status plan_segments(const struct plan *plan, struct segment **segments, size_t *count, struct message *why);
-/* A train compiled for a stimulator as a plan with one channel (no demand, no target), so that it can be checked, signed and streamed. */
-enum status plan_of_train(const struct train *train, const struct profile *profile, const char *muscle, const struct stimulator *stimulator,
-                          const struct hookup *hookup, const struct plan_options *options, struct plan *plan, struct message *why);
+enum status plan_segments(const struct plan *plan, struct segment **segments, size_t *count,
+                          struct message *why);
+/* A train compiled for a stimulator as a plan with one channel (no demand, no target), so that it can be
+ * checked, signed and streamed. */
+enum status plan_of_train(const struct train *train, const struct profile *profile, const char *muscle,
+                          const struct stimulator *stimulator, const struct hookup *hookup,
+                          const struct plan_options *options, struct plan *plan, struct message *why);
 
 #endif

@@ -180,6 +180,7 @@ enum status predictor_contraction(struct predictor *predictor, double start_ms, 
     *measures = (struct hold_measures){.first_quarter_n = none, .last_quarter_n = none, .droop_percent = none, .rise_ms = none};
     measures->mean_n = course.hold.integral / window->hold_ms + tone_n;
     measures->peak_n = course.hold.greatest + tone_n;
+    measures->greatest_n = fmax(course.hold.greatest, course.outside.greatest) + tone_n;
     measures->force_time_integral_outside_n_s = course.outside.integral / 1000;
     measure_quarters(&course, tone_n, measures);
     measure_periods(&course, window, start_ms, tone_n, measures);

@@ -42,6 +42,7 @@ struct hold_measures {
     double ripple_percent, droop_percent, overshoot_percent;
     double rise_ms;                                           /* NAN where the hold never settles */
     double force_time_integral_outside_n_s;                   /* ramps: outside the hold, first to last pulse, tone aside */
+    double greatest_n; /* over the whole contraction, ramps too: what a force cap is held against */
     unsigned periods;                                         /* whole periods in the hold */
 };
 struct hold_window {

@@ -1,0 +1,225 @@
+/* One channel of a plan, made. The goal of this code: what the search sees (target, settings, muscle, limits)
+ * is put together in one place, and the blocks that come of it hold nothing that was not run. */
+#include "core/plan/maker.h"
+#include "core/plan/channel.h"
+#include "core/plan/recount.h"
+
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+enum { CAP_ROUNDS = 6 };
+static const double ramp_longest = 8.0; /* of the latest rise: what ramp.c may try */
+
+/* N from N*m or back takes a lever; a profile measured as torque has its forces in N*m. */
+static enum status lever_of(const struct profile_muscle *muscle, const char *what, double *lever_m,
+                            struct message *why)
+{
+    *lever_m = muscle->has_measured ? muscle->measured.lever_m : (double)NAN;
+    if (*lever_m > 0.0) return STATUS_OK;
+    return status_fail(why, STATUS_REFUSED, "%s needs measured: lever_m: in the profile of %s", what,
+                       muscle->name);
+}
+
+static bool as_torque(const struct profile_muscle *muscle)
+{
+    return muscle->has_measured && muscle->measured.as_torque;
+}
+
+/* The greatest fused force: the rested, potentiated muscle without fatigue, at the strongest settings and the
+ * highest rate allowed, over the second of two seconds. */
+static enum status greatest_force(struct maker *maker, double *force_n, struct message *why)
+{
+    const struct demand *demand = maker->demand;
+    const bool pairs = !demand->pattern[0];
+    const struct session_frequencies list =
+        search_frequencies(demand, maker->stimulator, &maker->channel->limits, pairs, 1);
+    if (list.count == 0)
+        return status_fail(why, STATUS_REFUSED, "no frequency is left: %s", plan_why_text(list.end.reason));
+    struct attempt_bench *bench = &maker->work.bench;
+    struct muscle_parameters fresh = maker->muscle->parameters;
+    fresh.has_potentiation = false;
+    fresh.alpha_A_per_ms2 = fresh.alpha_Km_per_ms_n = fresh.alpha_tau1_per_n = fresh.beta_A_per_pulse = 0.0;
+    struct predictor *rested = predictor_new(&fresh, false, NULL, why);
+    if (!rested) return STATUS_REFUSED;
+    const double fastest = list.from + (double)(list.count - 1) * list.step;
+    bench->space = maker->problem.space;
+    settings_rate(&bench->space, fastest * (pairs ? 2.0 : 1.0));
+    const struct solve_request request = {.frame = {.frequency_pps = fastest,
+                                                    .opening = 1,
+                                                    .pairs = pairs,
+                                                    .opening_gap_ms = 5.0,
+                                                    .ramp_up = {.ms = 1000.0},
+                                                    .hold_ms = 1000.0},
+                                          .before = rested};
+    const struct solve_settings strongest = solve_strongest(bench);
+    struct solve_result result;
+    const enum status status = solve_at(bench, &request, &strongest, &result, why);
+    predictor_free(rested);
+    *force_n = result.attempt.hold.mean_n;
+    return status;
+}
+
+enum status maker_target(struct maker *maker, double *target_n, struct message *why)
+{
+    const struct demand *demand = maker->demand;
+    const struct profile_muscle *muscle = maker->muscle;
+    double lever_m = (double)NAN, greatest_n = (double)NAN;
+    enum status status = STATUS_OK;
+    *target_n = demand->target;
+    switch (demand->target_kind) {
+    case TARGET_N:
+        if (!as_torque(muscle)) break;
+        status = lever_of(muscle, "target_n on a muscle measured as torque", &lever_m, why);
+        *target_n = demand->target * lever_m;
+        break;
+    case TARGET_NM:
+        if (as_torque(muscle)) break;
+        status = lever_of(muscle, "target_nm", &lever_m, why);
+        *target_n = demand->target / lever_m;
+        break;
+    case TARGET_PERCENT:
+        status = greatest_force(maker, &greatest_n, why);
+        *target_n = demand->target / 100.0 * greatest_n;
+        break;
+    }
+    if (status == STATUS_OK && !(*target_n > maker->muscle->parameters.tone_n))
+        return status_fail(why, STATUS_REFUSED, "the target of %g N is not above the muscle's tone of %g N",
+                           *target_n, maker->muscle->parameters.tone_n);
+    return status;
+}
+
+static enum status open_work(struct maker *maker, struct message *why)
+{
+    const struct demand *demand = maker->demand;
+    const double longest_ms =
+        fmax(ramp_longest * demand->rise_ms_max + demand->hold_ms + demand->release_ms, 3000.0);
+    const double fastest = maker->stimulator->frequency_pps.to;
+    enum status status = attempt_bench_open(&maker->work.bench, &maker->muscle->parameters,
+                                            attempt_pulses_max(longest_ms, fastest), false, why);
+    if (status != STATUS_OK) return status;
+    maker->work.now = predictor_new(&maker->muscle->parameters, false, NULL, why);
+    maker->rested = predictor_new(&maker->muscle->parameters, false, NULL, why);
+    if (!maker->work.now || !maker->rested) return STATUS_REFUSED;
+    maker->work.bench.limits = maker->channel->limits;
+    maker->work.bench.channel = (uint8_t)maker->channel->channel;
+    return STATUS_OK;
+}
+
+enum status maker_open(struct maker *maker, const struct demand *demand, const struct profile_muscle *muscle,
+                       const struct stimulator *stimulator, struct plan_channel *channel, struct message *why)
+{
+    *maker = (struct maker){.demand = demand, .muscle = muscle, .stimulator = stimulator, .channel = channel};
+    enum status status = open_work(maker, why);
+    if (status == STATUS_OK)
+        status = settings_space_make(&maker->problem.space, demand, channel, muscle, stimulator, why);
+    double target_n = (double)NAN;
+    if (status == STATUS_OK) status = maker_target(maker, &target_n, why);
+    if (status != STATUS_OK) return status;
+    channel->demand = *demand;
+    channel->target_n = target_n;
+    channel->start_ms = demand->start_ms;
+    if (as_torque(muscle) && muscle->measured.lever_m > 0.0) channel->force_cap_n *= muscle->measured.lever_m;
+    struct session_problem *problem = &maker->problem;
+    problem->demand = demand;
+    problem->aim = contraction_aim_of(demand, target_n, channel->force_cap_n);
+    problem->solve_target_n = target_n;
+    problem->rested = maker->rested;
+    problem->start_us = plan_us_up(demand->start_ms);
+    problem->warm_up =
+        muscle->parameters.has_potentiation ? demand->warm_up : 0; /* only a dormant muscle needs them */
+    problem->contractions = problem->warm_up + demand->contractions;
+    maker->contraction = calloc(problem->contractions, sizeof *maker->contraction);
+    if (!maker->contraction) return status_fail(why, STATUS_INTERNAL, "out of memory");
+    return STATUS_OK;
+}
+
+void maker_close(struct maker *maker)
+{
+    attempt_bench_close(&maker->work.bench);
+    predictor_free(maker->work.now);
+    predictor_free(maker->rested);
+    free(maker->contraction);
+    maker->work.now = maker->rested = NULL;
+    maker->contraction = NULL;
+}
+
+/* Runs of equal contractions become blocks; warm-ups have their own. */
+static size_t blocks_of(const struct maker *maker, unsigned given, struct plan_block *block)
+{
+    size_t blocks = 0;
+    for (unsigned k = 0; k < given; k++) {
+        const struct session_contraction *one = &maker->contraction[k];
+        const bool warm = k < maker->problem.warm_up;
+        if (k > 0 && warm == (k - 1 < maker->problem.warm_up) &&
+            session_same_settings(&one->settings, &maker->contraction[k - 1].settings)) {
+            if (block) {
+                block[blocks - 1].count++;
+                block[blocks - 1].settings.repeat++;
+            }
+            continue;
+        }
+        if (block)
+            block[blocks] = (struct plan_block){
+                .first = k + 1, .count = 1, .settings = one->settings, .why = one->why, .warm_up = warm};
+        if (block && block[blocks].why.reason == WHY_NONE &&
+            k > 0) /* the first scored ones with the warm-ups' settings */
+            block[blocks].why =
+                plan_why_make(WHY_START, one->hold.mean_n, maker->problem.solve_target_n, "N");
+        blocks++;
+    }
+    return blocks;
+}
+
+enum status maker_fill(struct maker *maker, struct message *why)
+{
+    struct plan_channel *channel = maker->channel;
+    const struct search_result *found = &maker->found;
+    struct session_outcome outcome;
+    const enum status status = session_run(&maker->work, &maker->problem, &found->policy, &found->frequencies,
+                                           true, maker->contraction, &outcome, why);
+    if (status != STATUS_OK) return status;
+    free(channel->block);
+    channel->block = NULL;
+    channel->blocks = 0;
+    const size_t blocks = blocks_of(maker, outcome.given, NULL);
+    channel->block = calloc(blocks ? blocks : 1, sizeof *channel->block);
+    if (!channel->block) return status_fail(why, STATUS_INTERNAL, "out of memory");
+    channel->blocks = blocks_of(maker, outcome.given, channel->block);
+    maker->found.outcome = outcome;
+    channel->ramp_trials = outcome.ramp.trials;
+    memcpy(channel->ramp_trial, outcome.ramp.trial, sizeof channel->ramp_trial);
+    return STATUS_OK;
+}
+
+/* The cap could not be kept: nothing is given. */
+static void drop_blocks(struct plan_channel *channel)
+{
+    free(channel->block);
+    channel->block = NULL;
+    channel->blocks = 0;
+}
+
+enum status maker_make(struct maker *maker, struct plan *plan, const struct profile *profile,
+                       const struct plan_options *options, struct message *why)
+{
+    struct search_options search = {.progress = options->progress, .context = options->context};
+    struct session_problem *problem = &maker->problem;
+    const double cap_n = maker->channel->force_cap_n;
+    if (problem->solve_target_n > 0.98 * cap_n) problem->solve_target_n = 0.98 * cap_n;
+    for (int round = 0; round <= CAP_ROUNDS; round++) {
+        search.quick = round > 0;
+        search.near = maker->found.policy;
+        enum status status =
+            search_policies(&maker->work, problem, maker->stimulator, &search, &maker->found, why);
+        if (status == STATUS_OK) status = maker_fill(maker, why);
+        if (status != STATUS_OK) return status;
+        plan->first_miss_why = maker->found.outcome.first_miss_why;
+        status = plan_recount(plan, profile, options, why);
+        if (status != STATUS_OK || !(maker->channel->force_edge_n > cap_n)) return status;
+        problem->solve_target_n *= 0.995 * cap_n / maker->channel->force_edge_n;
+    }
+    drop_blocks(maker->channel);
+    plan->first_miss_why = plan_why_make(WHY_FORCE_CAP, maker->channel->force_edge_n, cap_n, "N");
+    return plan_recount(plan, profile, options, why);
+}
