@@ -67,7 +67,7 @@ struct muscle_parameters draw_muscle(uint64_t *state)
     return p;
 }
 
-size_t draw_pulses(uint64_t *state, struct train_pulse pulses[DRAW_PULSES_MAX])
+size_t draw_pulses(uint64_t *state, double tau1_ms, struct train_pulse pulses[DRAW_PULSES_MAX])
 {
     const size_t count = 8 + draw_next(state) % (DRAW_PULSES_MAX - 8);
     double now = draw_next(state) % 2 ? draw_uniform(state, 0, 50) : 0;
@@ -77,9 +77,9 @@ size_t draw_pulses(uint64_t *state, struct train_pulse pulses[DRAW_PULSES_MAX])
         pulses[i] = (struct train_pulse){.time_ms = now, .duration_us = duration, .current_ma = current};
         if (kind < 6) pulses[i].duration_us = draw_uniform(state, 50, 600);
         now += kind == 7    ? draw_log(state, 2, 8)
-               : kind == 8  ? draw_log(state, 300, 5000)
+               : kind == 8  ? draw_log(state, 300, tau1_ms < 10 ? 1000 : 5000)
                : kind == 9  ? draw_log(state, 2, 300)
-               : kind == 10 && i % 16 == 0 ? draw_log(state, 5000, 60000)
+               : kind == 10 && i % 8 == 0 && tau1_ms > 25 ? draw_log(state, 5000, 60000)
                             : typical;
     }
     return count;
