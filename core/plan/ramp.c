@@ -8,7 +8,11 @@
 #include <math.h>
 #include <string.h>
 
-enum { LENGTHS = 10, LENGTHS_LONG = 6 };
+enum { LENGTHS_LONG = 6 };
+/* Shares of the latest rise: all of them, or the few of a scan. */
+static const double lengths[] = {0.0, 0.2, 0.35, 0.5, 0.6, 0.7, 0.8, 0.9}, lengths_few[] = {0.5, 0.7, 0.85};
+static const double strain_most =
+    0.93; /* the muscle slows as it tires: what only just fits will not for long */
 static const double overshoot_same_percent = 0.1, outside_same = 1e-3;
 
 /* What one shape and length came to. */
@@ -40,7 +44,7 @@ static double strain_of(const struct demand *demand, const struct hold_measures 
 static bool better(const struct trial *a, const struct trial *b)
 {
     if (a->slew_kept != b->slew_kept) return a->slew_kept;
-    if (a->strain > 1.0 || b->strain > 1.0) return a->strain < b->strain;
+    if (a->strain > strain_most || b->strain > strain_most) return a->strain < b->strain;
     const double over = overshoot_counted(a) - overshoot_counted(b);
     if (fabs(over) >= overshoot_same_percent) return over < 0.0;
     return a->seen.outside_n_s < b->seen.outside_n_s * (1.0 - outside_same);
@@ -55,7 +59,7 @@ static enum status run_trial(struct attempt_bench *bench, const struct solve_req
     own.frame.ramp_up.shape = own.frame.ramp_down.shape = shape;
     own.frame.ramp_up.ms = ms;
     struct solve_result result;
-    const enum status status = solve_at(bench, &own, settings, &result, why);
+    const enum status status = solve_step(bench, &own, settings, &result, why);
     if (status != STATUS_OK) return status;
     struct dose_channel played = *guard;
     trial->broken = attempt_guard(bench, start_us, &played);
@@ -70,27 +74,28 @@ static enum status run_trial(struct attempt_bench *bench, const struct solve_req
     return STATUS_OK;
 }
 
-/* Lengths: tenths of the latest rise, to 10 ms; then, should slew need it, longer ones up to eight times
- * that. */
-static double length_ms(const struct demand *demand, int i)
+/* Length number i, to 10 ms; beyond the list come, should slew need them, longer ones up to eight times the
+ * latest rise. */
+static double length_ms(const struct demand *demand, const double *shares, size_t count, size_t i)
 {
-    const double rise = demand->rise_ms_max;
-    if (i < LENGTHS) return floor(rise * i / LENGTHS / 10.0) * 10.0;
-    return floor(rise * pow(2.0, 0.5 * (double)(i - LENGTHS + 1)) / 10.0) * 10.0;
+    const double share = i < count ? shares[i] : pow(2.0, 0.5 * (double)(i - count + 1));
+    return floor(demand->rise_ms_max * share / 10.0) * 10.0;
 }
 
 /* The best length of one shape. */
 static enum status best_length(struct attempt_bench *bench, const struct solve_request *request,
                                const struct demand *demand, const struct solve_settings *settings,
                                const struct dose_channel *guard, uint64_t start_us, enum ramp_shape shape,
-                               struct trial *best, struct message *why)
+                               bool few, struct trial *best, struct message *why)
 {
+    const double *shares = few ? lengths_few : lengths;
+    const size_t count = few ? sizeof lengths_few / sizeof *lengths_few : sizeof lengths / sizeof *lengths;
     bool any = false;
-    for (int i = 0; i < LENGTHS + LENGTHS_LONG; i++) {
-        if (i >= LENGTHS && best->slew_kept) break;
+    for (size_t i = 0; i < count + LENGTHS_LONG; i++) {
+        if (i >= count && best->slew_kept) break;
         struct trial trial;
         const enum status status = run_trial(bench, request, demand, settings, guard, start_us, shape,
-                                             length_ms(demand, i), &trial, why);
+                                             length_ms(demand, shares, count, i), &trial, why);
         if (status != STATUS_OK) return status;
         if (!any || better(&trial, best)) *best = trial;
         any = true;
@@ -100,8 +105,8 @@ static enum status best_length(struct attempt_bench *bench, const struct solve_r
 
 enum status ramp_choose(struct attempt_bench *bench, const struct solve_request *request,
                         const struct demand *demand, const struct solve_settings *settings,
-                        const struct dose_channel *guard, uint64_t start_us, struct ramp_choice *choice,
-                        struct message *why)
+                        const struct dose_channel *guard, uint64_t start_us, bool few,
+                        struct ramp_choice *choice, struct message *why)
 {
     static const enum ramp_shape shapes[] = {RAMP_LINEAR, RAMP_RAISED_COSINE, RAMP_EXPONENTIAL};
     struct trial winner = {0};
@@ -111,13 +116,15 @@ enum status ramp_choose(struct attempt_bench *bench, const struct solve_request 
         if (!demand->ramp[shapes[s]]) continue;
         struct trial best = {0};
         const enum status status =
-            best_length(bench, request, demand, settings, guard, start_us, shapes[s], &best, why);
+            best_length(bench, request, demand, settings, guard, start_us, shapes[s], few, &best, why);
         if (status != STATUS_OK) return status;
         if (choice->trials == 0 || better(&best, &winner)) {
             winner = best;
             chosen = choice->trials;
         }
         choice->trial[choice->trials++] = best.seen;
+        if (few && best.slew_kept && best.strain <= strain_most)
+            break; /* a scan takes the first shape that does */
     }
     if (choice->trials == 0) return status_fail(why, STATUS_REFUSED, "the demand allows no ramp shape");
     choice->trial[chosen].chosen = true;

@@ -12,11 +12,11 @@ struct ramp_choice {
     struct plan_ramp_trial trial[PLAN_RAMP_TRIALS_MAX];
 };
 
-/* Tries every allowed shape at several lengths with the settings as they are. guard: the channel's memory at
- * start_us. */
+/* Tries every allowed shape at several lengths, the settings moved along by one step each. few: the short
+ * lists of a scan. guard: the channel's memory at start_us. */
 enum status ramp_choose(struct attempt_bench *bench, const struct solve_request *request,
                         const struct demand *demand, const struct solve_settings *settings,
-                        const struct dose_channel *guard, uint64_t start_us, struct ramp_choice *choice,
-                        struct message *why);
+                        const struct dose_channel *guard, uint64_t start_us, bool few,
+                        struct ramp_choice *choice, struct message *why);
 
 #endif

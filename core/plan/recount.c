@@ -246,6 +246,7 @@ static struct plan_why why_it_ends(struct counter *counter, unsigned asked)
     const struct plan_channel *channel = counter->channel;
     struct dose_channel guard;
     dose_init(&guard);
+    dose_session(&guard, 0, 0, 0);
     uint64_t at_us = plan_us_up(channel->start_ms);
     for (size_t b = 0; b < channel->blocks; b++) {
         struct contraction settings = channel->block[b].settings;

@@ -10,6 +10,7 @@
 
 enum { COARSE_MAX = 24, HALVINGS = 6, TRIED_MAX = 256 };
 static const double coarse_ratio = 1.2;
+static const double hopeless_ripple = 2.0; /* of the limit: slower only ripples more */
 static const double growths[] = {0.1, 0.25, 0.5};
 
 struct scan {
@@ -142,39 +143,44 @@ static enum status refine(struct scan *scan, struct session_policy policy, unsig
     return STATUS_OK;
 }
 
-/* One pattern and opening: coarse, then fine. */
+/* One pattern and opening: coarse from the top down, until the force is far from fused; then fine. */
 static enum status scan_starts(struct scan *scan, struct session_policy policy)
 {
-    unsigned index[COARSE_MAX] = {0};
+    unsigned index[COARSE_MAX] = {0}, low = 0, best = 0, high = 0;
     const unsigned count = coarse_list(scan->frequencies, index);
-    unsigned best = 0;
     struct session_outcome best_outcome = {0};
-    for (unsigned i = 0; i < count; i++) {
+    for (unsigned i = count; i-- > 0;) {
         struct session_outcome outcome;
         policy.frequency_pps = frequency_at(scan->frequencies, index[i]);
         const enum status status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
-        if (i == 0 || better(scan->problem->demand, &outcome, &best_outcome)) {
-            best = i;
+        if (i + 1 == count || better(scan->problem->demand, &outcome, &best_outcome)) {
+            best = index[i];
+            low = index[i > 0 ? i - 1 : 0];
+            high = index[i + 1 < count ? i + 1 : i];
             best_outcome = outcome;
         }
+        const struct plan_why *miss = &outcome.first_miss_why;
+        if (outcome.met == 0 && miss->reason == WHY_RIPPLE && miss->value > hopeless_ripple * miss->limit)
+            break;
     }
-    const unsigned low = index[best > 0 ? best - 1 : 0], high = index[best + 1 < count ? best + 1 : best];
-    return refine(scan, policy, low, index[best], high, best_outcome);
+    return refine(scan, policy, low, best, high, best_outcome);
 }
 
-/* Larger steps of frequency from the best start. */
+/* Larger steps of frequency from the best start; then every ramp on what did best. */
 static enum status scan_growths(struct scan *scan)
 {
     struct session_policy policy = scan->result->policy;
-    if (!policy.steps) return STATUS_OK;
-    for (size_t i = 0; i < sizeof growths / sizeof *growths; i++) {
+    for (size_t i = 0; policy.steps && i < sizeof growths / sizeof *growths; i++) {
         struct session_outcome outcome;
         policy.growth = growths[i];
         const enum status status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
     }
-    return STATUS_OK;
+    struct session_outcome outcome;
+    policy = scan->result->policy;
+    policy.thorough = true;
+    return try_policy(scan, &policy, &outcome);
 }
 
 /* Only the neighbourhood of a policy that is known: a few starts about it. */

@@ -27,6 +27,7 @@ struct state {
     bool have;
     bool at_end;   /* no allowed setting reaches the target any more: the mean may sink */
     bool given_up; /* nor does any keep it within the tolerance */
+    bool missed;   /* a scored contraction was missed already */
     struct ramp_choice ramp;
 };
 
@@ -55,7 +56,7 @@ struct plan_why session_dose_why(const struct dose_verdict *verdict)
         [DOSE_CURRENT] = {WHY_CURRENT_RANGE, 1e-3, "mA"},
         [DOSE_DURATION] = {WHY_DURATION_RANGE, 1.0, "us"},
         [DOSE_CHARGE] = {WHY_CHARGE_LIMIT, 1e-6, "uC"},
-        [DOSE_RMS] = {WHY_RMS_LIMIT, 1.0, ""},
+        [DOSE_RMS] = {WHY_RMS_LIMIT, 1e-3, "mA"},
         [DOSE_RATE] = {WHY_RATE_LIMIT, 1.0, "pps"},
         [DOSE_GAP] = {WHY_GAP, 1.0, "us"},
         [DOSE_ENERGY] = {WHY_CURRENT_RANGE, 1e-3, "mJ"},
@@ -107,7 +108,7 @@ static enum status choose_ramp(struct state *state)
     const struct solve_request request = request_of(state);
     enum status status =
         ramp_choose(&state->work->bench, &request, state->problem->demand, &state->present.settings,
-                    &state->guard, state->at_us, &state->ramp, state->why);
+                    &state->guard, state->at_us, !state->policy->thorough, &state->ramp, state->why);
     if (status != STATUS_OK) return status;
     state->frame.ramp_up.shape = state->frame.ramp_down.shape = state->ramp.shape;
     state->frame.ramp_up.ms = state->ramp.ms;
@@ -222,9 +223,10 @@ static enum status begin(struct state *state)
                                                                     ? RAMP_RAISED_COSINE
                                                                     : RAMP_EXPONENTIAL;
     state->frame.ramp_up.ms = floor(0.5 * demand->rise_ms_max / 10.0) * 10.0;
-    enum status status = solve_now(state);
-    if (status == STATUS_OK) status = choose_ramp(state);
-    return status;
+    const enum status status = solve_now(state);
+    if (status != STATUS_OK || state->problem->warm_up > 0)
+        return status; /* the ramp is chosen for the scored ones */
+    return choose_ramp(state);
 }
 
 /* Settings for the contraction that comes, by the state the muscle is in; `changed` and its reason. */
@@ -266,7 +268,8 @@ static enum status next_settings(struct state *state, unsigned number, struct pl
     if (status != STATUS_OK) return status;
     const enum plan_why_reason miss =
         contraction_miss(&state->problem->aim, &state->present.attempt.hold, search_margin).reason;
-    if (!first_scored && (miss == WHY_RISE || miss == WHY_OVERSHOOT)) status = choose_ramp(state);
+    if (!first_scored && !state->missed && (miss == WHY_RISE || miss == WHY_OVERSHOOT || miss == WHY_RIPPLE))
+        status = choose_ramp(state);
     if (status != STATUS_OK) return status;
     state->present.contraction.rest_ms = rest_ms; /* move_on says it anew; not a change of settings */
     if (first_scored)
@@ -341,6 +344,7 @@ static void start(struct state *state, struct session_work *work, const struct s
     work->bench.tolerance_percent = problem->aim.tolerance_percent;
     predictor_copy(work->now, problem->rested);
     dose_init(&state->guard);
+    dose_session(&state->guard, 0, 0, 0);
     set_rate(state, policy->frequency_pps);
 }
 
@@ -371,6 +375,7 @@ enum status session_run(struct session_work *work, const struct session_problem 
         const bool scored = k > problem->warm_up;
         if (k == problem->warm_up + 1) outcome->ramp = state.ramp;
         if (scored && miss.reason != WHY_NONE) note_miss(outcome, k, &miss);
+        state.missed = outcome->first_miss != 0;
         if (outcome->first_miss != 0 && !whole) break;
         outcome->given = k;
         outcome->charge_uc += compiled_charge_uc(&work->bench.compiled);

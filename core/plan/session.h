@@ -11,6 +11,7 @@ struct session_policy {
     unsigned opening;
     bool pairs;
     bool steps;    /* frequency may be raised when recruitment is spent */
+    bool thorough; /* every ramp is tried, not the few of a scan */
     double growth; /* least relative rise of frequency at a step; 0: the next the stimulator has */
 };
 

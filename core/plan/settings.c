@@ -131,7 +131,6 @@ static void bound_space(struct settings_space *space, const struct demand *deman
         grid_up(fmax(least_ma * 1000.0, 1.0), grid->current_from_ua, grid->current_step_ua);
     space->duration_from_us = grid_up(fmax(least_us, 1.0), grid->duration_from_us, grid->duration_step_us);
     space->rms_ua = limits->rms_ua;
-    space->recovery_us = limits->recovery_us;
     space->net_dc_na = limits->net_dc_na;
     space->mismatch_ppm = limits->mismatch_ppm;
 }
@@ -215,15 +214,12 @@ double settings_share(const struct settings_space *space, double duration_us, do
     return recruitment_of(&space->recruitment, duration_us, current_ua / 1000.0);
 }
 
-/* Longest duration that r.m.s. allows: n (I^2 d + second phase) <= L^2 s; the second phase is I^2 d, or I^2
- * d^2 / recovery. */
+/* Longest duration that r.m.s. allows: n 2 I^2 d <= L^2 s. The guard counts a recovery phase as the first
+ * one, which bounds it. */
 static double rms_duration_us(const struct settings_space *space, double current_ua)
 {
-    const double budget =
-        (double)space->rms_ua * (double)space->rms_ua * 1e6 / (space->pulses_per_s * current_ua * current_ua);
-    if (space->recovery_us == 0) return budget / 2.0;
-    const double recovery = (double)space->recovery_us; /* d + d^2/r = budget */
-    return recovery / 2.0 * (sqrt(1.0 + 4.0 * budget / recovery) - 1.0);
+    return (double)space->rms_ua * (double)space->rms_ua * 1e6 /
+           (2.0 * space->pulses_per_s * current_ua * current_ua);
 }
 
 /* Charge that the net direct current allows at this rate: mismatch x charge x rate. */

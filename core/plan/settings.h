@@ -23,8 +23,8 @@ struct settings_space {
     bool greatest_current;
     uint32_t current_from_ua, duration_from_us; /* least allowed, on the grid, above 0 */
     struct settings_bound current_to, duration_to,
-        charge_to;                /* greatest allowed: the first two on the grid */
-    uint64_t rms_ua, recovery_us; /* recovery 0: symmetric phases */
+        charge_to; /* greatest allowed: the first two on the grid */
+    uint64_t rms_ua;
     uint64_t net_dc_na, mismatch_ppm;
     double pulses_per_s;   /* in the busiest second, opening extras included */
     uint32_t strongest_ua; /* the current that recruits most, with its longest duration, at this rate */

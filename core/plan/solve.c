@@ -153,18 +153,23 @@ static double slope_percent(const struct hold_measures *hold)
     return 100.0 * (hold->last_quarter_n - hold->first_quarter_n) / hold->mean_n;
 }
 
-/* Distance from what is wanted: the mean's from the target, quarters that are not level on top. */
+/* Distance from what is wanted: the mean's from the target; quarters that are not level weigh the same, per
+ * percent; those that break the demand weigh ten times that. */
 static double badness(const struct solver *solver, double mean_n, double droop_percent)
 {
     const struct contraction_aim *aim = solver->request->aim;
-    const double level = fmin(level_percent, 0.5 * aim->droop_percent_max);
-    return fabs(mean_n - aim->target_n) / aim->target_n + 0.1 * fmax(0.0, fabs(droop_percent) - level);
+    const double droop = fabs(droop_percent), level = fmin(level_percent, 0.5 * aim->droop_percent_max);
+    return fabs(mean_n - aim->target_n) / aim->target_n + 0.01 * fmax(0.0, droop - level) +
+           0.1 * fmax(0.0, droop - 0.95 * aim->droop_percent_max);
 }
 
+/* Of two attempts as near, the one that keeps rise, ripple and overshoot too. */
 static double badness_of(const struct solver *solver, const struct attempt_result *attempt)
 {
     const double value = badness(solver, attempt->hold.mean_n, slope_percent(&attempt->hold));
-    return isnan(value) ? (double)INFINITY : value;
+    const enum plan_why_reason miss = contraction_miss(solver->request->aim, &attempt->hold, 0.002).reason;
+    const bool other = miss == WHY_RIPPLE || miss == WHY_RISE || miss == WHY_OVERSHOOT;
+    return isnan(value) ? (double)INFINITY : value + (other ? 0.05 : 0.0);
 }
 
 /* The best attempt so far; ties to the least charge. */
@@ -263,6 +268,24 @@ static enum status iterate(struct solver *solver, double from, double to, struct
         ends_of(solver, (struct pair){here.level + step.level, here.slope + step.slope}, &from, &to);
     }
     return STATUS_OK;
+}
+
+enum status solve_step(struct attempt_bench *bench, const struct solve_request *request,
+                       const struct solve_settings *settings, struct solve_result *result,
+                       struct message *why)
+{
+    struct solver solver = {.bench = bench, .request = request, .slopes = request->slopes, .why = why};
+    solver.rail = rail_at(bench, settings->other);
+    enum status status = solve_at(bench, request, settings, result, why);
+    if (status != STATUS_OK || bench->space.knob == KNOB_NONE) return status;
+    const struct pair here = place_of(&solver, (double)settings->from, (double)settings->to);
+    const struct pair step = step_to(&solver.slopes, error_of(&solver, &result->attempt));
+    double from, to;
+    ends_of(&solver, (struct pair){here.level + step.level, here.slope + step.slope}, &from, &to);
+    const struct solve_settings moved = {rail_round(&solver.rail, from), rail_round(&solver.rail, to),
+                                         settings->other};
+    if (moved.from == settings->from && moved.to == settings->to) return status;
+    return solve_at(bench, request, &moved, result, why);
 }
 
 /* What the slopes promise of a neighbour of the best. */

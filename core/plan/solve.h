@@ -43,6 +43,10 @@ enum status solve_settings(struct attempt_bench *bench, const struct solve_reque
 /* The contraction of given settings, run once (no search). */
 enum status solve_at(struct attempt_bench *bench, const struct solve_request *request,
                      const struct solve_settings *settings, struct solve_result *result, struct message *why);
+/* The contraction of settings moved one step towards the target by request->slopes: two runs. */
+enum status solve_step(struct attempt_bench *bench, const struct solve_request *request,
+                       const struct solve_settings *settings, struct solve_result *result,
+                       struct message *why);
 /* The strongest settings at the bench's rate. */
 struct solve_settings solve_strongest(const struct attempt_bench *bench);
 
