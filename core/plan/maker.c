@@ -112,7 +112,8 @@ enum status maker_open(struct maker *maker, const struct demand *demand, const s
     *maker = (struct maker){.demand = demand, .muscle = muscle, .stimulator = stimulator, .channel = channel};
     enum status status = open_work(maker, why);
     if (status == STATUS_OK)
-        status = settings_space_make(&maker->problem.space, demand, channel, muscle, stimulator, why);
+        status = settings_space_make(&maker->problem.space, &maker->whole, demand, channel, muscle,
+                                     stimulator, why);
     double target_n = (double)NAN;
     if (status == STATUS_OK) status = maker_target(maker, &target_n, why);
     if (status != STATUS_OK) return status;
@@ -192,6 +193,41 @@ enum status maker_fill(struct maker *maker, struct message *why)
     return STATUS_OK;
 }
 
+/* A current that is not varied is chosen once. The search ran at the one that reaches most; the least that
+ * covers what the session turned out to need gives finer steps of force. It is taken where it carries the
+ * demand as long. */
+static enum status lower_current(struct maker *maker, const struct settings_space *whole,
+                                 const struct search_options *options, struct message *why)
+{
+    double most = 0.0, least = 1.0;
+    enum status status =
+        session_run(&maker->work, &maker->problem, &maker->found.policy, &maker->found.frequencies, false,
+                    maker->contraction, &maker->found.outcome, why);
+    for (unsigned k = 0; k < maker->found.outcome.given && status == STATUS_OK; k++) {
+        const struct contraction *one = &maker->contraction[k].settings;
+        const double end_us = isnan(one->trim_duration_us) ? one->duration_us : one->trim_duration_us;
+        most = fmax(most, settings_share(&maker->problem.space, fmax(one->duration_us, end_us),
+                                         one->current_ma * 1000.0));
+        least = fmin(least, settings_share(&maker->problem.space, fmin(one->duration_us, end_us),
+                                           one->current_ma * 1000.0));
+    }
+    const struct settings_space strongest = maker->problem.space;
+    const uint32_t current = settings_current_for(whole, least, fmin(1.02 * most, 0.999));
+    if (status != STATUS_OK || current >= strongest.strongest_ua) return status;
+    settings_fix_current(&maker->problem.space, current);
+    struct search_options near = *options;
+    near.quick = true;
+    near.near = maker->found.policy;
+    struct search_result lower = {0};
+    status = search_policies(&maker->work, &maker->problem, maker->stimulator, &near, &lower, why);
+    if (status != STATUS_OK) return status;
+    if (lower.outcome.met >= maker->found.outcome.met)
+        maker->found = lower;
+    else
+        maker->problem.space = strongest;
+    return STATUS_OK;
+}
+
 /* The cap could not be kept: nothing is given. */
 static void drop_blocks(struct plan_channel *channel)
 {
@@ -212,6 +248,8 @@ enum status maker_make(struct maker *maker, struct plan *plan, const struct prof
         search.near = maker->found.policy;
         enum status status =
             search_policies(&maker->work, problem, maker->stimulator, &search, &maker->found, why);
+        if (status == STATUS_OK && round == 0 && problem->space.choose_cover)
+            status = lower_current(maker, &maker->whole, &search, why);
         if (status == STATUS_OK) status = maker_fill(maker, why);
         if (status != STATUS_OK) return status;
         plan->first_miss_why = maker->found.outcome.first_miss_why;

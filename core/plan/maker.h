@@ -11,6 +11,7 @@ struct maker {
     struct plan_channel *channel; /* the plan's; begun already */
     struct session_work work;
     struct session_problem problem;
+    struct settings_space whole; /* before a current was chosen once */
     struct predictor *rested;
     struct session_contraction *contraction; /* problem.contractions of them */
     struct search_result found;

@@ -272,7 +272,7 @@ static struct plan_why binding_of(const struct counter *counter, const struct pr
         return plan_why_make(WHY_FORCE_CAP, counter->cap_edge_n, channel->force_cap_n, "N");
     struct settings_space space;
     struct message ignored;
-    if (settings_space_make(&space, &channel->demand, channel, muscle, &counter->plan->stimulator,
+    if (settings_space_make(&space, NULL, &channel->demand, channel, muscle, &counter->plan->stimulator,
                             &ignored) != STATUS_OK)
         return counter->miss;
     if (space.recruitment.law == RECRUITMENT_FULL)

@@ -68,7 +68,7 @@ struct session_frequencies search_frequencies(const struct demand *demand,
 
 /* The order of preference. `charge` and `smoothness` put theirs first among plans that keep the demand
  * equally long: a plan that gives up at once costs no charge and is no answer. */
-static bool better(const struct demand *demand, const struct session_outcome *a,
+bool search_better(const struct demand *demand, const struct session_outcome *a,
                    const struct session_outcome *b)
 {
     if (a->met != b->met) return a->met > b->met;
@@ -90,7 +90,7 @@ static enum status try_policy(struct scan *scan, const struct session_policy *po
         session_run(scan->work, scan->problem, policy, scan->frequencies, false, NULL, outcome, scan->why);
     if (status != STATUS_OK) return status;
     scan->tried++;
-    if (!scan->result->any || better(scan->problem->demand, outcome, &scan->result->outcome)) {
+    if (!scan->result->any || search_better(scan->problem->demand, outcome, &scan->result->outcome)) {
         scan->result->any = true;
         scan->result->policy = *policy;
         scan->result->frequencies = *scan->frequencies;
@@ -127,7 +127,7 @@ static enum status refine(struct scan *scan, struct session_policy policy, unsig
         policy.frequency_pps = frequency_at(scan->frequencies, middle);
         const enum status status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
-        const bool wins = better(scan->problem->demand, &outcome, &best_outcome);
+        const bool wins = search_better(scan->problem->demand, &outcome, &best_outcome);
         if (wins && below)
             high = best;
         else if (wins)
@@ -154,7 +154,7 @@ static enum status scan_starts(struct scan *scan, struct session_policy policy)
         policy.frequency_pps = frequency_at(scan->frequencies, index[i]);
         const enum status status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
-        if (i + 1 == count || better(scan->problem->demand, &outcome, &best_outcome)) {
+        if (i + 1 == count || search_better(scan->problem->demand, &outcome, &best_outcome)) {
             best = index[i];
             low = index[i > 0 ? i - 1 : 0];
             high = index[i + 1 < count ? i + 1 : i];

@@ -23,6 +23,9 @@ struct search_result {
 struct session_frequencies search_frequencies(const struct demand *demand,
                                               const struct stimulator *stimulator,
                                               const struct dose_limits *limits, bool pairs, unsigned opening);
+/* Is outcome a the better one by the demand's preference? */
+bool search_better(const struct demand *demand, const struct session_outcome *a,
+                   const struct session_outcome *b);
 /* STATUS_REFUSED where there is no policy to try, or it was stopped. */
 enum status search_policies(struct session_work *work, const struct session_problem *problem,
                             const struct stimulator *stimulator, const struct search_options *options,

@@ -214,6 +214,39 @@ static struct plan_why change_why(const struct state *state, const struct solve_
     return plan_why_make(would->mean_n > target ? WHY_OVERSHOOT : WHY_DROOP, would->mean_n, target, "N");
 }
 
+/* Neither duration nor current moves, but the current is still to be chosen once: the one whose mean is
+ * nearest the target. */
+static enum status choose_current(struct state *state)
+{
+    struct settings_space *space = &state->work->bench.space;
+    const struct solve_request request = request_of(state);
+    const uint32_t step = space->grid.current_step_ua ? space->grid.current_step_ua : 1;
+    const uint32_t duration = space->duration_from_us;
+    uint32_t low = state->problem->space.current_from_ua, high = settings_current_to(space, duration, NULL);
+    double best_off = (double)INFINITY;
+    uint32_t best = high;
+    while (low <= high && high > 0) {
+        const uint32_t middle = low + (high - low) / step / 2 * step;
+        const struct solve_settings settings = {duration, duration, middle};
+        struct solve_result result;
+        const enum status status = solve_at(&state->work->bench, &request, &settings, &result, state->why);
+        if (status != STATUS_OK) return status;
+        const double off = result.attempt.hold.mean_n - state->problem->solve_target_n;
+        if (fabs(off) < best_off) {
+            best_off = fabs(off);
+            best = middle;
+        }
+        if (off < 0.0)
+            low = middle + step;
+        else if (middle < step)
+            break;
+        else
+            high = middle - step;
+    }
+    space->current_from_ua = space->current_to.value = space->strongest_ua = best;
+    return STATUS_OK;
+}
+
 /* The first contraction: a middling ramp to solve on, then the ramp, then the settings. */
 static enum status begin(struct state *state)
 {
@@ -223,7 +256,8 @@ static enum status begin(struct state *state)
                                                                     ? RAMP_RAISED_COSINE
                                                                     : RAMP_EXPONENTIAL;
     state->frame.ramp_up.ms = floor(0.5 * demand->rise_ms_max / 10.0) * 10.0;
-    const enum status status = solve_now(state);
+    enum status status = state->problem->space.choose_current ? choose_current(state) : STATUS_OK;
+    if (status == STATUS_OK) status = solve_now(state);
     if (status != STATUS_OK || state->problem->warm_up > 0)
         return status; /* the ramp is chosen for the scored ones */
     return choose_ramp(state);
@@ -260,6 +294,13 @@ static enum status next_settings(struct state *state, unsigned number, struct pl
     }
     const struct solve_result former = state->present;
     const double rest_ms = former.contraction.rest_ms;
+    if (first_scored &&
+        state->problem->space.choose_current) { /* what woke the muscle is not what it works with */
+        bench->space.current_to = state->problem->space.current_to;
+        status = choose_current(state);
+        if (status == STATUS_OK) status = solve_now(state);
+        if (status != STATUS_OK) return status;
+    }
     status = first_scored ? choose_ramp(state) : solve_now(state);
     if (status == STATUS_OK && state->present.spent)
         status = spent(state, number > state->problem->warm_up);

@@ -176,12 +176,16 @@ static enum status choose_knob(struct settings_space *space, const struct demand
     if (status == STATUS_OK && law == RECRUITMENT_DURATION_EXPONENTIAL)
         status = fix_current(space, space->recruitment.current_ma, "the recruitment law's", why);
     if (status == STATUS_OK && !duration) status = fix_duration(space, demand, muscle, why);
+    const bool open_current = space->current_from_ua < space->current_to.value;
+    space->choose_current = space->knob == KNOB_NONE && open_current;
+    space->choose_cover = space->knob == KNOB_DURATION && !space->steps_current && open_current;
     return status;
 }
 
-enum status settings_space_make(struct settings_space *space, const struct demand *demand,
-                                const struct plan_channel *channel, const struct profile_muscle *muscle,
-                                const struct stimulator *stimulator, struct message *why)
+enum status settings_space_make(struct settings_space *space, struct settings_space *whole,
+                                const struct demand *demand, const struct plan_channel *channel,
+                                const struct profile_muscle *muscle, const struct stimulator *stimulator,
+                                struct message *why)
 {
     *space = (struct settings_space){.recruitment = muscle->parameters.recruitment,
                                      .grid = stimulator_grid(stimulator),
@@ -201,6 +205,9 @@ enum status settings_space_make(struct settings_space *space, const struct deman
     status = choose_knob(space, demand, muscle, why);
     if (status != STATUS_OK) return status;
     settings_rate(space, 1.0);
+    if (whole) *whole = *space;
+    if (space->choose_cover)
+        settings_fix_current(space, space->strongest_ua); /* the most reach; lowered once the need is known */
     if (settings_duration_to(space, space->strongest_ua, NULL) == 0)
         return status_fail(why, STATUS_REFUSED,
                            "no settings are left for %s: the charge of the least pulse is above %g uC (%s)",
@@ -287,6 +294,14 @@ void settings_rate(struct settings_space *space, double pulses_per_s)
             space->strongest_ua = current;
         }
     }
+}
+
+void settings_fix_current(struct settings_space *space, uint32_t current_ua)
+{
+    space->current_from_ua = current_ua;
+    space->strongest_ua = current_ua;
+    if (current_ua < space->current_to.value)
+        space->current_to = (struct settings_bound){current_ua, WHY_CURRENT_RANGE};
 }
 
 uint32_t settings_current_for(const struct settings_space *space, double least, double most)

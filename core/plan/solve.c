@@ -329,33 +329,37 @@ static enum status polish(struct solver *solver, struct best *best)
     return STATUS_OK;
 }
 
-/* Settings end at the rail's top: that end stays there, the free end rises from level as far as target and
- * droop allow. */
+/* Does the hold keep all but its mean? */
+static bool is_sound(const struct solver *solver, const struct attempt_result *attempt)
+{
+    struct contraction_aim aim = *solver->request->aim;
+    aim.tolerance_percent = 100.0;
+    return contraction_miss(&aim, &attempt->hold, 0.01).reason == WHY_NONE;
+}
+
+/* Settings end at the rail's top: that end stays there, the free end rises from level as far as the target
+ * and a sound hold allow. */
 static enum status spend(struct solver *solver, struct best *best)
 {
     const struct rail *rail = &solver->rail;
-    const struct contraction_aim *aim = solver->request->aim;
+    const double target_n = solver->request->aim->target_n;
     const bool late_ends = best->to >= best->from; /* the end of the hold is the one at the top */
     uint32_t low = late_ends ? best->from : best->to, high = rail->to;
-    bool moved = false;
-    while (low < high || !moved) {
-        const uint32_t middle = low + ((high - low) / rail->step + 1) / 2 * rail->step;
-        const uint32_t at = middle > rail->to ? rail->to : middle;
+    bool best_sound = is_sound(solver, &best->attempt);
+    while (low < high) {
+        const uint32_t at = low + ((high - low) / rail->step + 1) / 2 * rail->step;
         struct attempt_result attempt;
         const enum status status =
             late_ends ? try_at(solver, at, rail->to, &attempt) : try_at(solver, rail->to, at, &attempt);
         if (status != STATUS_OK) return status;
-        const bool level = fabs(attempt.hold.droop_percent) <= 0.98 * aim->droop_percent_max;
-        const bool below = attempt.hold.mean_n <= aim->target_n;
-        if (level || !moved) {
-            const double off = fabs(attempt.hold.mean_n - aim->target_n) / aim->target_n;
-            const bool best_level = fabs(best->attempt.hold.droop_percent) <= 0.98 * aim->droop_percent_max;
-            if (off < fabs(best->attempt.hold.mean_n - aim->target_n) / aim->target_n || !best_level)
-                *best = (struct best){late_ends ? at : rail->to, late_ends ? rail->to : at, attempt, off};
+        const bool sound = is_sound(solver, &attempt), below = attempt.hold.mean_n <= target_n;
+        const double off = fabs(attempt.hold.mean_n - target_n) / target_n;
+        const double best_off = fabs(best->attempt.hold.mean_n - target_n) / target_n;
+        if (sound && (!best_sound || off < best_off)) {
+            *best = (struct best){late_ends ? at : rail->to, late_ends ? rail->to : at, attempt, off};
+            best_sound = true;
         }
-        moved = true;
-        if (low >= high) break;
-        if (level && below)
+        if (sound && below)
             low = at;
         else
             high = at - rail->step;
