@@ -1,5 +1,6 @@
-/* Lanes: the muscle's equations between pulses on eight doubles at once (GNU vectors). The one statement of the right-hand side.
- * Included by code that is compiled for several instruction sets, so everything is inlined and passed by pointer. */
+/* Lanes: the muscle's equations between pulses on eight doubles at once (GNU vectors). The one statement of
+ * the right-hand side. Included by code that is compiled for several instruction sets, so everything is
+ * inlined and passed by pointer. */
 #ifndef PULSEWRIGHT_CORE_MUSCLE_LANES_H
 #define PULSEWRIGHT_CORE_MUSCLE_LANES_H
 #include "core/muscle/muscle.h"
@@ -24,11 +25,13 @@ LANES_INLINE void lanes_magnitude(lanes_t *out, const lanes_t *a)
     *out = (lanes_t)((lanes_mask_t)*a & 0x7fffffffffffffffLL);
 }
 
-/* e^x for x <= 0 (0 below -700), to 3e-16: x = n ln 2 + r, |r| <= 0.35, Taylor to r^13, n put into the exponent. */
+/* e^x for x <= 0 (0 below -700), to 3e-16: x = n ln 2 + r, |r| <= 0.35, Taylor to r^13, n put into the
+ * exponent. */
 LANES_INLINE void lanes_exp(lanes_t *out, const lanes_t *argument)
 {
     const lanes_t least = {-700, -700, -700, -700, -700, -700, -700, -700};
-    const double round_shift = 6755399441055744.0; /* 1.5 * 2^52: adding it rounds to an integer in the low bits */
+    const double round_shift =
+        6755399441055744.0; /* 1.5 * 2^52: adding it rounds to an integer in the low bits */
     lanes_t x;
     lanes_greater(&x, argument, &least);
     const lanes_t shifted = x * 1.4426950408889634074 + round_shift;
@@ -60,20 +63,23 @@ struct lanes_constants {
     double A_rest, Km_rest, tau1_rest, tau2, fatigue_rate, gain, rise_rate, decay_rate;
 };
 
-/* dy/dt of one row: y as enum lane_variable, C the activation now, drive = w L. One division: with D = K' + C and
- * E = tau1 D + tau2 C it is x = C/D = C E/(D E) and 1/(tau1 + tau2 x) = D/E = D D/(D E). */
-LANES_INLINE void lanes_derive(lanes_t dy[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES], const lanes_t *C, const lanes_t *drive,
-                               const struct lanes_constants *constants)
+/* dy/dt of one row: y as enum lane_variable, C the activation now, drive = w L. One division: with D = K' + C
+ * and E = tau1 D + tau2 C it is x = C/D = C E/(D E) and 1/(tau1 + tau2 x) = D/E = D D/(D E). */
+LANES_INLINE void lanes_derive(lanes_t dy[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES], const lanes_t *C,
+                               const lanes_t *drive, const struct lanes_constants *constants)
 {
     const lanes_t D = y[LANE_KM] * (1 + constants->gain * (1 - y[LANE_P])) + *C;
     const lanes_t E = y[LANE_TAU1] * D + constants->tau2 * *C;
     const lanes_t inverse = 1 / (D * E);
     const lanes_t x = *C * E * inverse;
     dy[LANE_PHI] = (*drive * y[LANE_A] * x - y[LANE_PHI] * (D * D * inverse)) * constants->slower_inverse;
-    const lanes_t dA = (constants->A_rest - y[LANE_A]) * constants->fatigue_rate + constants->alpha_A * y[LANE_PHI];
+    const lanes_t dA =
+        (constants->A_rest - y[LANE_A]) * constants->fatigue_rate + constants->alpha_A * y[LANE_PHI];
     lanes_greater(&dy[LANE_A], &dA, &constants->dA_least);
-    dy[LANE_KM] = (constants->Km_rest - y[LANE_KM]) * constants->fatigue_rate + constants->alpha_Km * y[LANE_PHI];
-    const lanes_t dtau1 = (constants->tau1_rest - y[LANE_TAU1]) * constants->fatigue_rate + constants->alpha_tau1 * y[LANE_PHI];
+    dy[LANE_KM] =
+        (constants->Km_rest - y[LANE_KM]) * constants->fatigue_rate + constants->alpha_Km * y[LANE_PHI];
+    const lanes_t dtau1 =
+        (constants->tau1_rest - y[LANE_TAU1]) * constants->fatigue_rate + constants->alpha_tau1 * y[LANE_PHI];
     lanes_lesser(&dy[LANE_TAU1], &dtau1, &constants->dtau1_most);
     dy[LANE_P] = x * (1 - y[LANE_P]) * constants->rise_rate - y[LANE_P] * constants->decay_rate;
 }

@@ -1,6 +1,7 @@
-/* The muscle at rest, at a pulse and as shown to people. The goal of this code: every sentence of the model once, in the model's order.
- * Sources: force and fatigue Ding et al. 2000 (J Appl Physiol 89:1322), 2003 (J Electromyogr Kinesiol 13:575); R0 above Km Kesar and
- * Binder-Macleod 2008; length and velocity Thelen 2003. Tiers, potentiation and the cost of activation are this project's. */
+/* The muscle at rest, at a pulse and as shown to people. The goal of this code: every sentence of the model
+ * once, in the model's order. Sources: force and fatigue Ding et al. 2000 (J Appl Physiol 89:1322), 2003 (J
+ * Electromyogr Kinesiol 13:575); R0 above Km Kesar and Binder-Macleod 2008; length and velocity Thelen 2003.
+ * Tiers, potentiation and the cost of activation are this project's. */
 #include "core/muscle/muscle.h"
 
 #include <math.h>
@@ -18,8 +19,8 @@ static enum status check_all(const struct usable *checks, size_t count, struct m
         const struct usable *check = &checks[i];
         const bool low = check->above ? !(check->value > check->least) : !(check->value >= check->least);
         if (low || !(check->value <= check->most) || !isfinite(check->value))
-            return status_fail(why, STATUS_REFUSED, "%s holds %g, it may hold %s %g to %g", check->key, check->value,
-                               check->above ? "above" : "", check->least, check->most);
+            return status_fail(why, STATUS_REFUSED, "%s holds %g, it may hold %s %g to %g", check->key,
+                               check->value, check->above ? "above" : "", check->least, check->most);
     }
     return STATUS_OK;
 }
@@ -68,12 +69,14 @@ static enum status check_potentiation(const struct muscle_parameters *p, struct 
     return p->has_potentiation ? check_all(checks, COUNT_OF(checks), why) : STATUS_OK;
 }
 
-enum status muscle_init(struct muscle *muscle, const struct muscle_parameters *parameters, struct message *why)
+enum status muscle_init(struct muscle *muscle, const struct muscle_parameters *parameters,
+                        struct message *why)
 {
     const struct muscle_parameters *p = parameters;
     struct muscle made;
     memset(&made, 0, sizeof made);
-    if (!p->has_force) return status_fail(why, STATUS_REFUSED, "force is missing: only `fit` takes a muscle without it");
+    if (!p->has_force)
+        return status_fail(why, STATUS_REFUSED, "force is missing: only `fit` takes a muscle without it");
     enum status status = check_force(p, why);
     if (status == STATUS_OK) status = check_recruitment(&p->recruitment, why);
     if (status == STATUS_OK) status = check_potentiation(p, why);
@@ -81,7 +84,8 @@ enum status muscle_init(struct muscle *muscle, const struct muscle_parameters *p
     if (status != STATUS_OK) return status;
     if (p->alpha_tau1_per_n != 0 && p->alpha_A_per_ms2 == 0)
         return status_fail(why, STATUS_REFUSED,
-                           "alpha_tau1_per_n holds %g and alpha_A_per_ms2 0: slowing without loss of force feeds itself, give both or neither",
+                           "alpha_tau1_per_n holds %g and alpha_A_per_ms2 0: slowing without loss of force "
+                           "feeds itself, give both or neither",
                            p->alpha_tau1_per_n);
     made.parameters = *p;
     made.length = isfinite(p->length_relative) ? muscle_length_factor(p->length_relative) : p->length_factor;
@@ -118,7 +122,8 @@ void muscle_rest(const struct muscle *muscle, struct muscle_state *state)
 {
     const struct pool *pool = &muscle->pool;
     memset(state, 0, sizeof *state);
-    for (unsigned lane = 0; lane < LANES_MAX; lane++) rest_lane(muscle, state, lane, lane < pool->tiers ? lane : 0);
+    for (unsigned lane = 0; lane < LANES_MAX; lane++)
+        rest_lane(muscle, state, lane, lane < pool->tiers ? lane : 0);
     for (unsigned k = 0; k < pool->tiers; k++) {
         const unsigned lane = muscle->parameters.has_pool ? k : 0;
         state->lane[k] = (unsigned char)lane;
@@ -146,8 +151,8 @@ static void copy_lane(struct muscle_state *state, unsigned to, unsigned from)
     state->t_last[to] = state->t_last[from];
 }
 
-/* Where a pulse weighs tiers of one lane differently they part: the first keeps the lane, the others take a new one.
- * Tiers of a lane are neighbours in order of recruitment, because weights fall along it. */
+/* Where a pulse weighs tiers of one lane differently they part: the first keeps the lane, the others take a
+ * new one. Tiers of a lane are neighbours in order of recruitment, because weights fall along it. */
 static void part_lanes(const struct muscle *muscle, struct muscle_state *state, const double *weight)
 {
     unsigned before = state->lane[0];
@@ -181,8 +186,9 @@ void muscle_pulse(const struct muscle *muscle, struct muscle_state *state, doubl
         if (lane == done || weight[k] == 0) continue;
         done = lane;
         const double R0 = above ? state->Km[lane] + p->R0_above_Km : p->R0;
-        const double R =
-            isnan(state->t_last[lane]) ? 1 : 1 + (R0 - 1) * exp(-(time_ms - state->t_last[lane]) / state->tau_c[lane]);
+        const double R = isnan(state->t_last[lane])
+                             ? 1
+                             : 1 + (R0 - 1) * exp(-(time_ms - state->t_last[lane]) / state->tau_c[lane]);
         const double kept = 1 - p->beta_A_per_pulse * state->fatigue[lane] * weight[k];
         state->w[lane] = weight[k];
         state->S[lane] += R;
@@ -223,7 +229,8 @@ double muscle_activation(const struct muscle *muscle, const struct muscle_state 
 }
 
 /* Steady mean force of one lane but for its share, at rate f (1/ms) and P = 1. */
-static double fused(const struct muscle_parameters *p, double A, double Km, double tau1, double tau_c, double per_ms)
+static double fused(const struct muscle_parameters *p, double A, double Km, double tau1, double tau_c,
+                    double per_ms)
 {
     const double R0 = isfinite(p->R0_above_Km) ? Km + p->R0_above_Km : p->R0;
     const double R = 1 + (R0 - 1) * exp(-1 / (per_ms * tau_c));
@@ -232,14 +239,16 @@ static double fused(const struct muscle_parameters *p, double A, double Km, doub
     return A * x * (tau1 + p->tau2_ms * x);
 }
 
-double muscle_force_remaining(const struct muscle *muscle, const struct muscle_state *state, double frequency_pps)
+double muscle_force_remaining(const struct muscle *muscle, const struct muscle_state *state,
+                              double frequency_pps)
 {
     const struct muscle_parameters *p = &muscle->parameters;
     const double per_ms = frequency_pps / 1000;
     double now = 0, rested = 0;
     for (unsigned i = 0; i < state->lanes; i++) {
         now += state->share[i] * fused(p, state->A[i], state->Km[i], state->tau1[i], state->tau_c[i], per_ms);
-        rested += state->share[i] * fused(p, p->A_rest_n_per_ms, p->Km_rest, p->tau1_rest_ms, state->tau_c[i], per_ms);
+        rested += state->share[i] *
+                  fused(p, p->A_rest_n_per_ms, p->Km_rest, p->tau1_rest_ms, state->tau_c[i], per_ms);
     }
     return now / rested;
 }

@@ -1,7 +1,9 @@
-/* Muscle: composes recruitment, summation, potentiation, force, fatigue and length. Constants of one muscle, its state at a moment, and
- * what happens at a pulse; what happens between pulses is integrated in core/predict by the derivatives of lanes.h.
+/* Muscle: composes recruitment, summation, potentiation, force, fatigue and length. Constants of one muscle,
+ * its state at a moment, and what happens at a pulse; what happens between pulses is integrated in
+ * core/predict by the derivatives of lanes.h.
  *
- * State lies in lanes: tiers with the same history are one lane (where tiers are alike), else each tier has its own. */
+ * State lies in lanes: tiers with the same history are one lane (where tiers are alike), else each tier has
+ * its own. */
 #ifndef PULSEWRIGHT_CORE_MUSCLE_MUSCLE_H
 #define PULSEWRIGHT_CORE_MUSCLE_MUSCLE_H
 #include "core/muscle/parameters.h"
@@ -16,7 +18,7 @@ enum { LANE_WIDTH = 8, LANES_MAX = MUSCLE_TIERS_MAX, LANE_VECTORS_MAX = LANES_MA
 struct muscle {
     struct muscle_parameters parameters;
     struct pool pool;
-    double length; /* L; a motion takes its place */
+    double length;                      /* L; a motion takes its place */
     double gain, rise_rate, decay_rate; /* potentiation; 0 where there is none */
     double fatigue_rate;                /* 1/tau_fat */
     double tau1_most_ms;                /* 5 tau1_rest */
@@ -33,14 +35,16 @@ struct muscle_state {
     LANE_ALIGNED double tau_c[LANES_MAX], slower_inverse[LANES_MAX], fatigue[LANES_MAX];
     /* 0 where the state stands at its bound and may only leave it, else -infinity or infinity: */
     LANE_ALIGNED double dA_least[LANES_MAX], dtau1_most[LANES_MAX];
-    double t_last[LANES_MAX]; /* of the last pulse that touched it, ms; NAN: none yet */
+    double t_last[LANES_MAX];             /* of the last pulse that touched it, ms; NAN: none yet */
     unsigned char lane[MUSCLE_TIERS_MAX]; /* of a tier */
     unsigned lanes;
     bool bound_A, bound_tau1; /* a bound was reached at some time */
 };
 
-/* Fills `muscle`; STATUS_REFUSED where a parameter can not be used (named, with what it may hold). Owns nothing. */
-enum status muscle_init(struct muscle *muscle, const struct muscle_parameters *parameters, struct message *why);
+/* Fills `muscle`; STATUS_REFUSED where a parameter can not be used (named, with what it may hold). Owns
+ * nothing. */
+enum status muscle_init(struct muscle *muscle, const struct muscle_parameters *parameters,
+                        struct message *why);
 /* Rested; dormant where it potentiates. */
 void muscle_rest(const struct muscle *muscle, struct muscle_state *state);
 /* One pulse that recruits rho, at time_ms, on the state just before it, in the model's order. */
@@ -51,7 +55,8 @@ double muscle_capacity(const struct muscle *muscle, const struct muscle_state *s
 double muscle_potentiation(const struct muscle_state *state);
 double muscle_activation(const struct muscle *muscle, const struct muscle_state *state); /* sum s_k w_k x_k */
 /* Steady fused force at full recruitment and P = 1 now, over its rested value. */
-double muscle_force_remaining(const struct muscle *muscle, const struct muscle_state *state, double frequency_pps);
+double muscle_force_remaining(const struct muscle *muscle, const struct muscle_state *state,
+                              double frequency_pps);
 
 /* L at a relative length: exp(-(l-1)^2/0.45) (Thelen 2003). */
 double muscle_length_factor(double relative_length);

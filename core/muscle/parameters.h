@@ -38,9 +38,10 @@ struct muscle_parameters {
     bool has_pool;
     enum pool_order pool_order;
     double force_range, speed_range, fatigue_range;
-    /* length: the factor L (exp(-(l-1)^2/0.45) of `relative` where that is what was given) and the slopes of a fit */
-    double length_factor;   /* NAN where length_relative is given */
-    double length_relative; /* NAN where length_factor is given */
+    /* length: the factor L (exp(-(l-1)^2/0.45) of `relative` where that is what was given) and the slopes of
+     * a fit */
+    double length_factor;                                          /* NAN where length_relative is given */
+    double length_relative;                                        /* NAN where length_factor is given */
     double length_reference_mm, slope_Km, slope_tau1, slope_tau_c; /* NAN where absent */
     double tone_n, delay_ms;
     unsigned tiers;

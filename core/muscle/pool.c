@@ -1,12 +1,14 @@
-/* Tiers in order of recruitment. The goal of this code: the profile's numbers stay those of the whole muscle however its units differ.
- * Source of the shape: motor unit forces spread exponentially over the pool (Fuglevand et al. 1993, who use a 100-fold range of force
- * and a threefold one of contraction time); force_range 50 is common practice, no source. */
+/* Tiers in order of recruitment. The goal of this code: the profile's numbers stay those of the whole muscle
+ * however its units differ. Source of the shape: motor unit forces spread exponentially over the pool
+ * (Fuglevand et al. 1993, who use a 100-fold range of force and a threefold one of contraction time);
+ * force_range 50 is common practice, no source. */
 #include "core/muscle/pool.h"
 
 #include <math.h>
 #include <string.h>
 
-/* A smaller part of a tier is the rounding of the shares' sum, not a recruited unit: the tier is not touched. */
+/* A smaller part of a tier is the rounding of the shares' sum, not a recruited unit: the tier is not touched.
+ */
 #define PART_LEAST 1e-12
 
 /* Divides by the share-weighted mean. */
@@ -29,7 +31,8 @@ enum status pool_make(const struct muscle_parameters *parameters, struct pool *p
     struct pool made;
     memset(&made, 0, sizeof made);
     if (tiers < 1 || tiers > MUSCLE_TIERS_MAX)
-        return status_fail(why, STATUS_REFUSED, "tiers holds %u, it may hold 1 to %d", tiers, MUSCLE_TIERS_MAX);
+        return status_fail(why, STATUS_REFUSED, "tiers holds %u, it may hold 1 to %d", tiers,
+                           MUSCLE_TIERS_MAX);
     made.tiers = tiers;
     if (!parameters->has_pool) {
         for (unsigned k = 0; k < tiers; k++) {
@@ -39,7 +42,8 @@ enum status pool_make(const struct muscle_parameters *parameters, struct pool *p
         *pool = made;
         return STATUS_OK;
     }
-    if (tiers == 1) return status_fail(why, STATUS_REFUSED, "tiers holds 1, a pool needs 2 to %d", MUSCLE_TIERS_MAX);
+    if (tiers == 1)
+        return status_fail(why, STATUS_REFUSED, "tiers holds 1, a pool needs 2 to %d", MUSCLE_TIERS_MAX);
     enum status status = check_range(parameters->force_range, "force_range", why);
     if (status == STATUS_OK) status = check_range(parameters->speed_range, "speed_range", why);
     if (status == STATUS_OK) status = check_range(parameters->fatigue_range, "fatigue_range", why);

@@ -1,4 +1,5 @@
-/* Pool: how the tiers of motor units differ. Shares, time factors and fatigue factors in order of recruitment. */
+/* Pool: how the tiers of motor units differ. Shares, time factors and fatigue factors in order of
+ * recruitment. */
 #ifndef PULSEWRIGHT_CORE_MUSCLE_POOL_H
 #define PULSEWRIGHT_CORE_MUSCLE_POOL_H
 #include "core/muscle/parameters.h"
@@ -7,7 +8,8 @@
 struct pool {
     unsigned tiers;
     double share[MUSCLE_TIERS_MAX];   /* of the force; sum 1 */
-    double slower[MUSCLE_TIERS_MAX];  /* theta: multiplies tau_c, divides the right side of dF/dt; share-weighted mean 1 */
+    double slower[MUSCLE_TIERS_MAX];  /* theta: multiplies tau_c, divides the right side of dF/dt;
+                                         share-weighted mean 1 */
     double fatigue[MUSCLE_TIERS_MAX]; /* f: multiplies every alpha and beta_A; share-weighted mean 1 */
 };
 

@@ -1,7 +1,7 @@
-/* The three recruitment laws and their inverses. The goal of this code: one place that says what a setting does, exact enough in both
- * directions that a ramp of recruitment comes back from its durations.
- * Sources: strength-duration Weiss 1901, Lapicque 1909, I = b (1 + c/d); the log-normal spread of thresholds is this project's;
- * duration-exponential Ding et al. 2007 (Muscle Nerve). */
+/* The three recruitment laws and their inverses. The goal of this code: one place that says what a setting
+ * does, exact enough in both directions that a ramp of recruitment comes back from its durations. Sources:
+ * strength-duration Weiss 1901, Lapicque 1909, I = b (1 + c/d); the log-normal spread of thresholds is this
+ * project's; duration-exponential Ding et al. 2007 (Muscle Nerve). */
 #include "core/muscle/recruitment.h"
 
 #include <math.h>
@@ -17,8 +17,9 @@ static double normal_density(double z)
     return 0.39894228040143267794 * exp(-0.5 * z * z);
 }
 
-/* Lower half only (p <= 1/2): a tail-shaped start, then Newton steps with Halley's correction on the logarithm of the tail, which is
- * concave and so converges from any start; the fixed point is where normal_cdf gives p back, to rounding. */
+/* Lower half only (p <= 1/2): a tail-shaped start, then Newton steps with Halley's correction on the
+ * logarithm of the tail, which is concave and so converges from any start; the fixed point is where
+ * normal_cdf gives p back, to rounding. */
 static double lower_inverse(double p)
 {
     const double t = sqrt(-2 * log(p));
@@ -54,20 +55,22 @@ double recruitment_of(const struct recruitment *recruitment, double duration_us,
         break;
     }
     case RECRUITMENT_DURATION_EXPONENTIAL:
-        if (duration_us > recruitment->pd0_us) rho = -expm1(-(duration_us - recruitment->pd0_us) / recruitment->pdt_us);
+        if (duration_us > recruitment->pd0_us)
+            rho = -expm1(-(duration_us - recruitment->pd0_us) / recruitment->pdt_us);
         break;
     }
     return rho < RECRUITMENT_LEAST ? 0 : rho;
 }
 
-enum status recruitment_takes_current(const struct recruitment *recruitment, double current_ma, struct message *why)
+enum status recruitment_takes_current(const struct recruitment *recruitment, double current_ma,
+                                      struct message *why)
 {
     if (recruitment->law != RECRUITMENT_DURATION_EXPONENTIAL) return STATUS_OK;
     /* settings come through microamperes: a difference below half of one is none */
     if (fabs(current_ma - recruitment->current_ma) <= 0.0005) return STATUS_OK;
     return status_fail(why, STATUS_REFUSED,
-                       "a pulse has %.9g mA, but the muscle's duration-exponential law holds at %.9g mA only", current_ma,
-                       recruitment->current_ma);
+                       "a pulse has %.9g mA, but the muscle's duration-exponential law holds at %.9g mA only",
+                       current_ma, recruitment->current_ma);
 }
 
 double recruitment_duration_us(const struct recruitment *recruitment, double rho, double current_ma)
@@ -76,7 +79,8 @@ double recruitment_duration_us(const struct recruitment *recruitment, double rho
     switch (recruitment->law) {
     case RECRUITMENT_FULL: return (double)NAN;
     case RECRUITMENT_STRENGTH_DURATION: {
-        const double over = current_ma / (recruitment->rheobase_ma * exp(recruitment->spread * normal_inverse(rho))) - 1;
+        const double over =
+            current_ma / (recruitment->rheobase_ma * exp(recruitment->spread * normal_inverse(rho))) - 1;
         return over > 0 ? recruitment->chronaxie_us / over : (double)NAN;
     }
     case RECRUITMENT_DURATION_EXPONENTIAL: return recruitment->pd0_us - recruitment->pdt_us * log1p(-rho);

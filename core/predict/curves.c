@@ -1,5 +1,6 @@
-/* A muscle at a glance. The goal of this code: four curves that a person in the field knows, from the same engine as every prediction.
- * Force-frequency and staircase: common practice, no source; the bout and the currents shown are this project's choice. */
+/* A muscle at a glance. The goal of this code: four curves that a person in the field knows, from the same
+ * engine as every prediction. Force-frequency and staircase: common practice, no source; the bout and the
+ * currents shown are this project's choice. */
 #include "core/predict/curves.h"
 
 #include "core/muscle/recruitment.h"
@@ -60,8 +61,9 @@ static void make_bout(struct engine *engine, struct curves *curves)
         engine_advance(engine, i * BOUT_CYCLE_MS);
         (void)train(engine, BOUT_PPS, BOUT_ON_MS, 0);
     }
-    (void)snprintf(curves->bout, sizeof curves->bout, "%d contractions of %g s at %g pps, every %g s, fully recruited",
-                   BOUT_CONTRACTIONS, BOUT_ON_MS / 1000, BOUT_PPS, BOUT_CYCLE_MS / 1000);
+    (void)snprintf(curves->bout, sizeof curves->bout,
+                   "%d contractions of %g s at %g pps, every %g s, fully recruited", BOUT_CONTRACTIONS,
+                   BOUT_ON_MS / 1000, BOUT_PPS, BOUT_CYCLE_MS / 1000);
 }
 
 static void make_recruitment(const struct recruitment *recruitment, struct curves *curves)
@@ -80,10 +82,12 @@ static void make_recruitment(const struct recruitment *recruitment, struct curve
     }
     for (size_t row = 0; row < curves->currents; row++)
         for (int i = 0; i < CURVES_DURATIONS; i++)
-            curves->recruited[row][i] = recruitment_of(recruitment, curves->duration_us[i], curves->current_ma[row]);
+            curves->recruited[row][i] =
+                recruitment_of(recruitment, curves->duration_us[i], curves->current_ma[row]);
 }
 
-enum status curves_make(const struct muscle_parameters *parameters, struct curves *curves, struct message *why)
+enum status curves_make(const struct muscle_parameters *parameters, struct curves *curves,
+                        struct message *why)
 {
     struct muscle muscle;
     struct engine rested, tired, scratch;
@@ -93,7 +97,8 @@ enum status curves_make(const struct muscle_parameters *parameters, struct curve
     engine_init(&rested, &muscle, false, NULL);
     tired = rested;
     curves->has_dormant = parameters->has_potentiation;
-    curves->has_tired = parameters->alpha_A_per_ms2 != 0 || parameters->alpha_Km_per_ms_n != 0 || parameters->beta_A_per_pulse != 0;
+    curves->has_tired = parameters->alpha_A_per_ms2 != 0 || parameters->alpha_Km_per_ms_n != 0 ||
+                        parameters->beta_A_per_pulse != 0;
 
     make_bout(&tired, curves);
     scratch = tired;
@@ -113,8 +118,10 @@ enum status curves_make(const struct muscle_parameters *parameters, struct curve
         potentiate(&potentiated);
         curves->frequency_pps[i] = frequencies_pps[i];
         curves->rested_n[i] = peak_from(&potentiated, &scratch, frequencies_pps[i]);
-        curves->dormant_n[i] = curves->has_dormant ? peak_from(&rested, &scratch, frequencies_pps[i]) : (double)NAN;
-        curves->tired_n[i] = curves->has_tired ? peak_from(&tired, &scratch, frequencies_pps[i]) : (double)NAN;
+        curves->dormant_n[i] =
+            curves->has_dormant ? peak_from(&rested, &scratch, frequencies_pps[i]) : (double)NAN;
+        curves->tired_n[i] =
+            curves->has_tired ? peak_from(&tired, &scratch, frequencies_pps[i]) : (double)NAN;
     }
 
     scratch = rested;

@@ -1,4 +1,5 @@
-/* Curves: a muscle at a glance. Force against frequency, recruitment against phase duration, the staircase, the recovery after a bout. */
+/* Curves: a muscle at a glance. Force against frequency, recruitment against phase duration, the staircase,
+ * the recovery after a bout. */
 #ifndef PULSEWRIGHT_CORE_PREDICT_CURVES_H
 #define PULSEWRIGHT_CORE_PREDICT_CURVES_H
 #include "core/muscle/parameters.h"
@@ -14,23 +15,26 @@ enum {
     CURVES_RECOVERY = 33
 };
 
-/* Arrays are filled up to the count beside them. Every force is the muscle's own: full recruitment, tone aside, delay aside. */
+/* Arrays are filled up to the count beside them. Every force is the muscle's own: full recruitment, tone
+ * aside, delay aside. */
 struct curves {
-    /* Force-frequency: peak of a 1-s train at full recruitment, in N. `rested`: fully rested, potentiated as far as the muscle can be.
-     * `dormant`: rested, potentiation 0 at its start; NAN where the muscle does not potentiate. `tired`: rested curve's muscle after the bout. */
+    /* Force-frequency: peak of a 1-s train at full recruitment, in N. `rested`: fully rested, potentiated as
+     * far as the muscle can be. `dormant`: rested, potentiation 0 at its start; NAN where the muscle does not
+     * potentiate. `tired`: rested curve's muscle after the bout. */
     size_t frequencies;
     double frequency_pps[CURVES_FREQUENCIES];
     double rested_n[CURVES_FREQUENCIES], dormant_n[CURVES_FREQUENCIES], tired_n[CURVES_FREQUENCIES];
     bool has_dormant, has_tired;
 
-    /* Recruitment rho (0..1) against phase duration, one row a current. currents 0: the law is `full` (rho is 1 for any pulse).
-     * With `duration-exponential` there is one row, at the law's own current. */
+    /* Recruitment rho (0..1) against phase duration, one row a current. currents 0: the law is `full` (rho is
+     * 1 for any pulse). With `duration-exponential` there is one row, at the law's own current. */
     size_t durations, currents;
     double duration_us[CURVES_DURATIONS];
     double current_ma[CURVES_CURRENTS_MAX];
     double recruited[CURVES_CURRENTS_MAX][CURVES_DURATIONS];
 
-    /* Staircase: peak force of twitches at 2 Hz from rest (dormant where the muscle potentiates), at full recruitment. */
+    /* Staircase: peak force of twitches at 2 Hz from rest (dormant where the muscle potentiates), at full
+     * recruitment. */
     size_t staircase;
     double staircase_s[CURVES_STAIRCASE], staircase_n[CURVES_STAIRCASE];
 
@@ -41,6 +45,7 @@ struct curves {
 };
 
 /* Fills `curves`; owns nothing. STATUS_REFUSED with `why` where the parameters are not usable. */
-enum status curves_make(const struct muscle_parameters *parameters, struct curves *curves, struct message *why);
+enum status curves_make(const struct muscle_parameters *parameters, struct curves *curves,
+                        struct message *why);
 
 #endif

@@ -1,10 +1,11 @@
-/* The engine between pulses. The goal of this code: errors within a stated share of a trace's peak over the whole range of parameters,
- * at a few dozen nanoseconds a pulse and tier.
+/* The engine between pulses. The goal of this code: errors within a stated share of a trace's peak over the
+ * whole range of parameters, at a few dozen nanoseconds a pulse and tier.
  *
- * Method: summation is exact (C and S in closed form, one exponential a step and lane, by polynomial). The rest is integrated by the
- * explicit pair of order 5(4) of Dormand and Prince (1980), local extrapolation, all lanes by one step, the step from the error estimate.
- * A state that reaches its bound is met there: the step is taken again to the very moment. When activation and force have died away,
- * what is left (fatigue, potentiation) is exponential and one step goes to the end. */
+ * Method: summation is exact (C and S in closed form, one exponential a step and lane, by polynomial). The
+ * rest is integrated by the explicit pair of order 5(4) of Dormand and Prince (1980), local extrapolation,
+ * all lanes by one step, the step from the error estimate. A state that reaches its bound is met there: the
+ * step is taken again to the very moment. When activation and force have died away, what is left (fatigue,
+ * potentiation) is exponential and one step goes to the end. */
 #include "core/predict/engine.h"
 
 #include <math.h>
@@ -16,8 +17,8 @@
 #define ENGINE_CLONES
 #endif
 
-/* Local tolerances, found against CVODE over drawn parameters (tests/core/predict): default 1e-4 of peak and 1e-5 of capacity overall,
- * exact 1e-7 and 1e-8. */
+/* Local tolerances, found against CVODE over drawn parameters (tests/core/predict): default 1e-4 of peak and
+ * 1e-5 of capacity overall, exact 1e-7 and 1e-8. */
 #define TOLERANCE_DEFAULT 2e-6
 #define TOLERANCE_EXACT 2e-9
 /* Below this share of its scale a lane's force, and what its activation may still give, is taken as gone. */
@@ -102,11 +103,12 @@ static const double row_4[] = {44.0 / 45, -56.0 / 15, 32.0 / 9};
 static const double row_5[] = {19372.0 / 6561, -25360.0 / 2187, 64448.0 / 6561, -212.0 / 729};
 static const double row_6[] = {9017.0 / 3168, -355.0 / 33, 46732.0 / 5247, 49.0 / 176, -5103.0 / 18656};
 static const double row_7[] = {35.0 / 384, 0, 500.0 / 1113, 125.0 / 192, -2187.0 / 6784, 11.0 / 84};
-static const double row_error[] = {71.0 / 57600, 0, -71.0 / 16695, 71.0 / 1920, -17253.0 / 339200, 22.0 / 525, -1.0 / 40};
+static const double row_error[] = {71.0 / 57600,      0,          -71.0 / 16695, 71.0 / 1920,
+                                   -17253.0 / 339200, 22.0 / 525, -1.0 / 40};
 
 /* out = y + h sum of row[j] k[j] */
-LANES_INLINE void combine(lanes_t out[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES], const lanes_t (*k)[LANE_VARIABLES],
-                          const double *row, int count, double h)
+LANES_INLINE void combine(lanes_t out[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES],
+                          const lanes_t (*k)[LANE_VARIABLES], const double *row, int count, double h)
 {
     for (int i = 0; i < LANE_VARIABLES; i++) {
         lanes_t sum = k[0][i] * row[0];
@@ -116,14 +118,15 @@ LANES_INLINE void combine(lanes_t out[LANE_VARIABLES], const lanes_t y[LANE_VARI
 }
 
 /* C after h: e^{-h/tau} given. */
-LANES_INLINE void activation_after(lanes_t *out, const lanes_t *C, const lanes_t *S_rate, const lanes_t *decay, double h)
+LANES_INLINE void activation_after(lanes_t *out, const lanes_t *C, const lanes_t *S_rate,
+                                   const lanes_t *decay, double h)
 {
     *out = (*C + *S_rate * h) * *decay;
 }
 
 /* One tried step of one row of lanes; the greatest error over its tolerance of each lane into *error. */
-LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsigned at, double h, const double factor[STAGES],
-                          lanes_t *error)
+LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsigned at, double h,
+                          const double factor[STAGES], lanes_t *error)
 {
     const struct muscle_state *state = &engine->state;
     struct lanes_constants constants;
@@ -131,7 +134,8 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
     load_constants(&constants, engine, at);
     load_state(y, state, at);
     for (int i = 0; i < LANE_VARIABLES; i++) k[0][i] = *(const lanes_t *)&engine->derivative[i][at];
-    const lanes_t C = *(const lanes_t *)&state->C[at], S = *(const lanes_t *)&state->S[at], w = *(const lanes_t *)&state->w[at];
+    const lanes_t C = *(const lanes_t *)&state->C[at], S = *(const lanes_t *)&state->S[at],
+                  w = *(const lanes_t *)&state->w[at];
     const lanes_t rate = 1 / *(const lanes_t *)&state->tau_c[at], S_rate = S * rate;
 
     /* e^{-h/10 tau}, its powers at the nodes 2/10, 3/10, 8/10 and 10/10; 8/9 on its own */
@@ -177,7 +181,8 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
     size += 1e-30;
     *error = zero;
     const lanes_t of_phi = miss[LANE_PHI] / size, of_A = miss[LANE_A] * (1 / constants.A_rest),
-                  of_Km = miss[LANE_KM] * (1 / constants.Km_rest), of_tau1 = miss[LANE_TAU1] * (1 / constants.tau1_rest);
+                  of_Km = miss[LANE_KM] * (1 / constants.Km_rest),
+                  of_tau1 = miss[LANE_TAU1] * (1 / constants.tau1_rest);
     lanes_greater(error, error, &of_phi);
     lanes_greater(error, error, &of_A);
     lanes_greater(error, error, &of_Km);
@@ -186,7 +191,8 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
 }
 
 /* A step of h from the state, not yet taken. Returns its error over the tolerance. */
-ENGINE_CLONES static double try_step(const struct engine *engine, struct trial *trial, double h, const double factor[STAGES])
+ENGINE_CLONES static double try_step(const struct engine *engine, struct trial *trial, double h,
+                                     const double factor[STAGES])
 {
     lanes_t worst = {0}, error;
     for (unsigned at = 0; at < engine->state.lanes; at += LANE_WIDTH) {
@@ -218,7 +224,8 @@ static void take(struct engine *engine, const struct trial *trial, double to_ms)
     engine->steps++;
 }
 
-/* Signed distance of the lane that is nearest to a bound it does not stand on, or farthest beyond it (then positive); relative. */
+/* Signed distance of the lane that is nearest to a bound it does not stand on, or farthest beyond it (then
+ * positive); relative. */
 static double beyond(const struct engine *engine, const double *A, const double *tau1)
 {
     const struct muscle_state *state = &engine->state;
@@ -236,10 +243,12 @@ static double beyond(const struct engine *engine, const double *A, const double 
 static void settle_bounds(struct engine *engine)
 {
     struct muscle_state *state = &engine->state;
-    const double near_A = BOUND_NEAR * engine->muscle.parameters.A_rest_n_per_ms, most = engine->muscle.tau1_most_ms;
+    const double near_A = BOUND_NEAR * engine->muscle.parameters.A_rest_n_per_ms,
+                 most = engine->muscle.tau1_most_ms;
     for (unsigned i = 0; i < state->lanes; i++) {
         const bool stands_A = state->A[i] <= near_A && engine->derivative[LANE_A][i] <= 0;
-        const bool stands_tau1 = state->tau1[i] >= most * (1 - BOUND_NEAR) && engine->derivative[LANE_TAU1][i] >= 0;
+        const bool stands_tau1 =
+            state->tau1[i] >= most * (1 - BOUND_NEAR) && engine->derivative[LANE_TAU1][i] >= 0;
         const double least = stands_A ? 0 : -(double)INFINITY, greatest = stands_tau1 ? 0 : (double)INFINITY;
         if (stands_A || state->A[i] < 0) state->A[i] = 0;
         if (stands_tau1 || state->tau1[i] > most) state->tau1[i] = most;
@@ -251,8 +260,8 @@ static void settle_bounds(struct engine *engine)
     }
 }
 
-/* The longest step worth trying first after a pulse: x = C/(K' + C) changes with C' = (S - C)/tau_c, and a step of the order of
- * (K' + C)/C' is where a polynomial stops to follow it. */
+/* The longest step worth trying first after a pulse: x = C/(K' + C) changes with C' = (S - C)/tau_c, and a
+ * step of the order of (K' + C)/C' is where a polynomial stops to follow it. */
 static double first_step(const struct engine *engine)
 {
     const struct muscle_state *state = &engine->state;
@@ -272,7 +281,8 @@ static bool quiet(const struct engine *engine)
 {
     const struct muscle_state *state = &engine->state;
     for (unsigned i = 0; i < state->lanes; i++) {
-        const double drive = state->w[i] * state->A[i] * (state->C[i] + state->S[i]) / state->Km[i] * state->tau_c[i];
+        const double drive =
+            state->w[i] * state->A[i] * (state->C[i] + state->S[i]) / state->Km[i] * state->tau_c[i];
         if (state->phi[i] > QUIET * engine->scale[i] || drive > QUIET * engine->scale[i]) return false;
     }
     return true;
@@ -311,10 +321,12 @@ static void make_fresh(struct engine *engine)
 static void stage_factors(const struct engine *engine, double h, double factor[STAGES])
 {
     for (int s = 0; s < STAGES; s++)
-        factor[s] = engine->motion ? motion_factor(engine->motion, engine->time_ms + node[s] * h) : engine->muscle.length;
+        factor[s] = engine->motion ? motion_factor(engine->motion, engine->time_ms + node[s] * h)
+                                   : engine->muscle.length;
 }
 
-/* A step of h went beyond a bound: finds the step that ends on it, by false position that halves a stale end (Illinois). */
+/* A step of h went beyond a bound: finds the step that ends on it, by false position that halves a stale end
+ * (Illinois). */
 static double meet_bound(const struct engine *engine, struct trial *trial, double h)
 {
     double factor[STAGES], low = 0, high = h;
@@ -362,8 +374,10 @@ void engine_step(struct engine *engine, double to_ms)
         const double left = to_ms - engine->time_ms;
         double h = engine->step_ms;
         const bool cut = h >= left;
-        if (cut) h = left;
-        else if (h > 0.5 * left) h = 0.5 * left;
+        if (cut)
+            h = left;
+        else if (h > 0.5 * left)
+            h = 0.5 * left;
         stage_factors(engine, h, factor);
         const double error = try_step(engine, &trial, h, factor);
         const double wanted = error > 0 ? 0.9 * pow(error, -0.2) : 5;
@@ -412,6 +426,7 @@ double engine_force_slope(struct engine *engine)
     if (!engine->given) return 0;
     make_fresh(engine);
     double sum = 0;
-    for (unsigned i = 0; i < engine->state.lanes; i++) sum += engine->state.share[i] * engine->derivative[LANE_PHI][i];
+    for (unsigned i = 0; i < engine->state.lanes; i++)
+        sum += engine->state.share[i] * engine->derivative[LANE_PHI][i];
     return sum;
 }

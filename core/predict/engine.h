@@ -1,5 +1,6 @@
 /* Engine: carries a muscle's state through the time between pulses. Internal to core/predict.
- * C and S go in closed form; force, fatigue and potentiation by an explicit Runge-Kutta pair with error control, eight lanes at once. */
+ * C and S go in closed form; force, fatigue and potentiation by an explicit Runge-Kutta pair with error
+ * control, eight lanes at once. */
 #ifndef PULSEWRIGHT_CORE_PREDICT_ENGINE_H
 #define PULSEWRIGHT_CORE_PREDICT_ENGINE_H
 #include "core/muscle/lanes.h"
@@ -10,7 +11,8 @@ struct engine {
     struct muscle muscle;
     struct muscle_state state;
     LANE_ALIGNED double derivative[LANE_VARIABLES][LANES_MAX]; /* of the state now, where `fresh` */
-    LANE_ALIGNED double scale[LANES_MAX]; /* greatest phi each lane has had: what its error is measured against */
+    LANE_ALIGNED double
+        scale[LANES_MAX]; /* greatest phi each lane has had: what its error is measured against */
     double time_ms;
     double step_ms;   /* what the last step's error suggests; 0: ask the state */
     double tolerance; /* of a step, relative */
@@ -28,8 +30,8 @@ void engine_step(struct engine *engine, double to_ms);
 void engine_advance(struct engine *engine, double to_ms);
 /* One pulse now. */
 void engine_pulse(struct engine *engine, double rho);
-double engine_force_n(const struct engine *engine);       /* F, no tone */
-double engine_force_slope(struct engine *engine);         /* dF/dt, N/ms */
+double engine_force_n(const struct engine *engine); /* F, no tone */
+double engine_force_slope(struct engine *engine);   /* dF/dt, N/ms */
 
 /* L V of a motion at a time; the end of the straight piece that holds the time (time itself excluded). */
 double motion_factor(const struct motion *motion, double time_ms);

@@ -1,5 +1,6 @@
-/* Measures of one contraction's hold. The goal of this code: mean, ripple, droop, rise and overshoot exactly as the house defines them,
- * from force between samples. Definitions: this project's (house chapter, "Quantities, said once"). */
+/* Measures of one contraction's hold. The goal of this code: mean, ripple, droop, rise and overshoot exactly
+ * as the house defines them, from force between samples. Definitions: this project's (house chapter,
+ * "Quantities, said once"). */
 #include "core/predict/periods.h"
 #include "core/predict/predict.h"
 #include "core/predict/predictor.h"
@@ -28,7 +29,8 @@ struct course {
     double opened_ms;
 };
 
-/* Advances through the corners of the hold, gathering into the period and into the hold or what is outside it. */
+/* Advances through the corners of the hold, gathering into the period and into the hold or what is outside
+ * it. */
 static void course_advance(struct course *course, double to_ms)
 {
     while (course->engine->time_ms < to_ms) {
@@ -94,7 +96,8 @@ static double mean_of(const struct period *periods, size_t count)
     return integral / time;
 }
 
-/* First and last quarter of the whole periods between the hold's first and last pulse. last_hold_ms: start of its last period. */
+/* First and last quarter of the whole periods between the hold's first and last pulse. last_hold_ms: start of
+ * its last period. */
 static void measure_quarters(const struct course *course, double tone_n, struct hold_measures *measures)
 {
     size_t first = 0, end = 0;
@@ -107,11 +110,12 @@ static void measure_quarters(const struct course *course, double tone_n, struct 
     const size_t n = end - first, quarter = n / 4 > 1 ? n / 4 : 1;
     measures->first_quarter_n = mean_of(&course->periods[first], quarter) + tone_n;
     measures->last_quarter_n = mean_of(&course->periods[end - quarter], quarter) + tone_n;
-    measures->droop_percent = 100 * fabs(measures->last_quarter_n - measures->first_quarter_n) / fabs(measures->mean_n);
+    measures->droop_percent =
+        100 * fabs(measures->last_quarter_n - measures->first_quarter_n) / fabs(measures->mean_n);
 }
 
-static void measure_periods(const struct course *course, const struct hold_window *window, double start_ms, double tone_n,
-                            struct hold_measures *measures)
+static void measure_periods(const struct course *course, const struct hold_window *window, double start_ms,
+                            double tone_n, struct hold_measures *measures)
 {
     const double tolerance_n = window->tolerance_percent / 100 * fabs(measures->mean_n);
     double ripple_n = (double)NAN, greatest_mean = (double)NAN;
@@ -120,8 +124,10 @@ static void measure_periods(const struct course *course, const struct hold_windo
         if (period->end_ms > course->hold_to_ms + SAME_MS) break;
         const double mean_n = mean_of(period, 1) + tone_n;
         if (!(mean_n <= greatest_mean)) greatest_mean = mean_n;
-        if (fabs(mean_n - measures->mean_n) > tolerance_n) measures->rise_ms = (double)NAN;
-        else if (isnan(measures->rise_ms)) measures->rise_ms = period->start_ms - start_ms;
+        if (fabs(mean_n - measures->mean_n) > tolerance_n)
+            measures->rise_ms = (double)NAN;
+        else if (isnan(measures->rise_ms))
+            measures->rise_ms = period->start_ms - start_ms;
         if (period->start_ms < course->hold_from_ms - SAME_MS) continue;
         measures->periods++;
         if (!(period->greatest - period->least <= ripple_n)) ripple_n = period->greatest - period->least;
@@ -130,26 +136,28 @@ static void measure_periods(const struct course *course, const struct hold_windo
     measures->overshoot_percent = 100 * (greatest_mean / window->target_n - 1);
 }
 
-static enum status check_pulses(const struct predictor *predictor, double start_ms, const struct train_pulse *pulses, size_t count,
-                                struct message *why)
+static enum status check_pulses(const struct predictor *predictor, double start_ms,
+                                const struct train_pulse *pulses, size_t count, struct message *why)
 {
     if (count == 0) return status_fail(why, STATUS_REFUSED, "a contraction has no pulse");
     if (!(start_ms + pulses[0].time_ms >= predictor->engine.time_ms))
         return status_fail(why, STATUS_REFUSED, "a contraction starts at %.9g ms, before the present %.9g ms",
                            start_ms + pulses[0].time_ms, predictor->engine.time_ms);
     for (size_t i = 0; i < count; i++) {
-        const enum status status =
-            recruitment_takes_current(&predictor->engine.muscle.parameters.recruitment, pulses[i].current_ma, why);
+        const enum status status = recruitment_takes_current(&predictor->engine.muscle.parameters.recruitment,
+                                                             pulses[i].current_ma, why);
         if (status != STATUS_OK) return status;
         if (i > 0 && !(pulses[i].time_ms - pulses[i - 1].time_ms >= 0.001 - 1e-9))
-            return status_fail(why, STATUS_REFUSED, "pulse %zu is %g ms after the one before, it must be at least 0.001 ms", i + 1,
+            return status_fail(why, STATUS_REFUSED,
+                               "pulse %zu is %g ms after the one before, it must be at least 0.001 ms", i + 1,
                                pulses[i].time_ms - pulses[i - 1].time_ms);
     }
     return STATUS_OK;
 }
 
-enum status predictor_contraction(struct predictor *predictor, double start_ms, const struct train_pulse *pulses, size_t count,
-                                  bool grid_pairs, unsigned opening, const struct hold_window *window,
+enum status predictor_contraction(struct predictor *predictor, double start_ms,
+                                  const struct train_pulse *pulses, size_t count, bool grid_pairs,
+                                  unsigned opening, const struct hold_window *window,
                                   struct hold_measures *measures, struct message *why)
 {
     const enum status status = check_pulses(predictor, start_ms, pulses, count, why);
@@ -177,7 +185,8 @@ enum status predictor_contraction(struct predictor *predictor, double start_ms, 
     course_tail(&course, &copy);
 
     const double tone_n = predictor->engine.muscle.parameters.tone_n, none = (double)NAN;
-    *measures = (struct hold_measures){.first_quarter_n = none, .last_quarter_n = none, .droop_percent = none, .rise_ms = none};
+    *measures = (struct hold_measures){
+        .first_quarter_n = none, .last_quarter_n = none, .droop_percent = none, .rise_ms = none};
     measures->mean_n = course.hold.integral / window->hold_ms + tone_n;
     measures->peak_n = course.hold.greatest + tone_n;
     measures->greatest_n = fmax(course.hold.greatest, course.outside.greatest) + tone_n;

@@ -1,5 +1,6 @@
-/* A moving muscle: length and velocity between a motion's samples. The goal of this code: the engine never steps across a corner of
- * the drive, so that its order holds. Length and velocity factors: Thelen 2003 (core/muscle). */
+/* A moving muscle: length and velocity between a motion's samples. The goal of this code: the engine never
+ * steps across a corner of the drive, so that its order holds. Length and velocity factors: Thelen 2003
+ * (core/muscle). */
 #include "core/muscle/muscle.h"
 #include "core/predict/engine.h"
 
@@ -22,8 +23,10 @@ static size_t row_before(const struct motion *motion, double time_ms)
     size_t low = 0, high = motion->samples - 1;
     while (high - low > 1) {
         const size_t middle = (low + high) / 2;
-        if (motion->time_ms[middle] <= time_ms) low = middle;
-        else high = middle;
+        if (motion->time_ms[middle] <= time_ms)
+            low = middle;
+        else
+            high = middle;
     }
     return low;
 }
@@ -38,9 +41,10 @@ double motion_factor(const struct motion *motion, double time_ms)
     if (t > motion->time_ms[last]) return muscle_length_factor(motion->relative_length[last]);
     const size_t row = row_before(motion, t);
     const double part = (t - motion->time_ms[row]) / (motion->time_ms[row + 1] - motion->time_ms[row]);
-    const double length = motion->relative_length[row] + part * (motion->relative_length[row + 1] - motion->relative_length[row]);
-    const double velocity =
-        motion->relative_velocity[row] + part * (motion->relative_velocity[row + 1] - motion->relative_velocity[row]);
+    const double length = motion->relative_length[row] +
+                          part * (motion->relative_length[row + 1] - motion->relative_length[row]);
+    const double velocity = motion->relative_velocity[row] +
+                            part * (motion->relative_velocity[row + 1] - motion->relative_velocity[row]);
     return muscle_length_factor(length) * muscle_velocity_factor(velocity);
 }
 
@@ -60,7 +64,8 @@ double motion_piece_end_ms(const struct motion *motion, double time_ms)
     double start_ms;
     const double t = within(motion, time_ms, &start_ms);
     if (t < motion->time_ms[0]) return motion->time_ms[0];
-    if (t >= motion->time_ms[last]) return motion->periodic ? nextafter(time_ms, (double)INFINITY) : (double)INFINITY;
+    if (t >= motion->time_ms[last])
+        return motion->periodic ? nextafter(time_ms, (double)INFINITY) : (double)INFINITY;
     const size_t row = row_before(motion, t);
     double end = motion->time_ms[row + 1];
     end = crossing(motion, row, t, 0, end);

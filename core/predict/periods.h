@@ -5,7 +5,8 @@
 #include "core/train/contraction.h"
 #include <stddef.h>
 
-/* Force over a stretch of time, gathered step by step from values and slopes at both ends (a cubic through them). */
+/* Force over a stretch of time, gathered step by step from values and slopes at both ends (a cubic through
+ * them). */
 struct gather {
     double integral; /* N ms */
     double least, greatest, greatest_at_ms;

@@ -1,5 +1,5 @@
-/* A predictor: one muscle's state between pulses, as callers hold it. The goal of this code: a plain value that copies by memcpy, so that
- * a search may share prefixes of a session. */
+/* A predictor: one muscle's state between pulses, as callers hold it. The goal of this code: a plain value
+ * that copies by memcpy, so that a search may share prefixes of a session. */
 #include "core/predict/predict.h"
 
 #include "core/muscle/recruitment.h"
@@ -12,22 +12,25 @@
 static enum status check_motion(const struct motion *motion, struct message *why)
 {
     if (!motion) return STATUS_OK;
-    if (motion->samples < 2) return status_fail(why, STATUS_REFUSED, "a motion has %zu rows, it needs 2", motion->samples);
+    if (motion->samples < 2)
+        return status_fail(why, STATUS_REFUSED, "a motion has %zu rows, it needs 2", motion->samples);
     for (size_t i = 0; i < motion->samples; i++) {
-        if (!isfinite(motion->time_ms[i]) || !isfinite(motion->relative_length[i]) || !isfinite(motion->relative_velocity[i]))
+        if (!isfinite(motion->time_ms[i]) || !isfinite(motion->relative_length[i]) ||
+            !isfinite(motion->relative_velocity[i]))
             return status_fail(why, STATUS_REFUSED, "row %zu of the motion holds what is no number", i + 1);
         if (i > 0 && !(motion->time_ms[i] > motion->time_ms[i - 1]))
-            return status_fail(why, STATUS_REFUSED, "row %zu of the motion is at %g ms, not after %g ms", i + 1, motion->time_ms[i],
-                               motion->time_ms[i - 1]);
+            return status_fail(why, STATUS_REFUSED, "row %zu of the motion is at %g ms, not after %g ms",
+                               i + 1, motion->time_ms[i], motion->time_ms[i - 1]);
     }
     return STATUS_OK;
 }
 
-struct predictor *predictor_new(const struct muscle_parameters *parameters, bool exact, const struct motion *motion,
-                                struct message *why)
+struct predictor *predictor_new(const struct muscle_parameters *parameters, bool exact,
+                                const struct motion *motion, struct message *why)
 {
     struct muscle muscle;
-    if (muscle_init(&muscle, parameters, why) != STATUS_OK || check_motion(motion, why) != STATUS_OK) return NULL;
+    if (muscle_init(&muscle, parameters, why) != STATUS_OK || check_motion(motion, why) != STATUS_OK)
+        return NULL;
     struct predictor *predictor = aligned_alloc(64, sizeof *predictor);
     if (!predictor) {
         (void)status_fail(why, STATUS_INTERNAL, "out of memory");

@@ -1,6 +1,7 @@
 /* A trace: force, capacity, potentiation and remaining force at sample times, and what a person reads off it.
- * The goal of this code: one pass over pulses and samples in order of time; what is read between samples comes from the same pass.
- * The engine runs on the muscle's own time; force is shown delay_ms later, with tone. */
+ * The goal of this code: one pass over pulses and samples in order of time; what is read between samples
+ * comes from the same pass. The engine runs on the muscle's own time; force is shown delay_ms later, with
+ * tone. */
 #include "core/predict/periods.h"
 #include "core/predict/predict.h"
 #include "core/predict/predictor.h"
@@ -12,7 +13,8 @@
 #include <string.h>
 
 enum { SAMPLES_MAX = 100000000 };
-/* A pulse within this of the one before may be of its period, where the gaps after are at least twice as long (doublets, triplets). */
+/* A pulse within this of the one before may be of its period, where the gaps after are at least twice as long
+ * (doublets, triplets). */
 #define SAME_PERIOD_MS 10.0
 /* How long after the last pulse half relaxation is looked for. */
 #define RELAXATION_MS_MAX 60000.0
@@ -26,8 +28,8 @@ struct pass {
     double until_ms, step_ms, delay_ms, tone_n;
     double window_from_ms, window_to_ms;
     struct gather whole, window, period;
-    double period_start_ms, ripple_n; /* start NAN: no period is open */
-    size_t last_given;                /* index + 1 of the last pulse given */
+    double period_start_ms, ripple_n;         /* start NAN: no period is open */
+    size_t last_given;                        /* index + 1 of the last pulse given */
     double last_duration_us, last_current_ma; /* settings of the window's last pulse */
     double window_potentiation;
 };
@@ -55,20 +57,24 @@ static enum status trace_make(struct trace *trace, size_t samples, struct messag
     return STATUS_OK;
 }
 
-static enum status check_pulses(const struct muscle_parameters *parameters, const struct train_pulse *pulses, size_t count,
-                                struct message *why)
+static enum status check_pulses(const struct muscle_parameters *parameters, const struct train_pulse *pulses,
+                                size_t count, struct message *why)
 {
     for (size_t i = 0; i < count; i++) {
         const struct train_pulse *pulse = &pulses[i];
         if (!isfinite(pulse->time_ms) || pulse->time_ms < 0)
-            return status_fail(why, STATUS_REFUSED, "pulse %zu is at %g ms, it may be at 0 or later", i + 1, pulse->time_ms);
-        if (!isfinite(pulse->duration_us) || pulse->duration_us < 0 || !isfinite(pulse->current_ma) || pulse->current_ma < 0)
-            return status_fail(why, STATUS_REFUSED, "pulse %zu has %g us and %g mA, neither may be below 0", i + 1,
-                               pulse->duration_us, pulse->current_ma);
+            return status_fail(why, STATUS_REFUSED, "pulse %zu is at %g ms, it may be at 0 or later", i + 1,
+                               pulse->time_ms);
+        if (!isfinite(pulse->duration_us) || pulse->duration_us < 0 || !isfinite(pulse->current_ma) ||
+            pulse->current_ma < 0)
+            return status_fail(why, STATUS_REFUSED, "pulse %zu has %g us and %g mA, neither may be below 0",
+                               i + 1, pulse->duration_us, pulse->current_ma);
         if (i > 0 && !(pulse->time_ms - pulses[i - 1].time_ms >= 0.001 - 1e-9))
-            return status_fail(why, STATUS_REFUSED, "pulse %zu at %.9g ms follows one at %.9g ms: less than 0.001 ms apart", i + 1,
+            return status_fail(why, STATUS_REFUSED,
+                               "pulse %zu at %.9g ms follows one at %.9g ms: less than 0.001 ms apart", i + 1,
                                pulse->time_ms, pulses[i - 1].time_ms);
-        const enum status status = recruitment_takes_current(&parameters->recruitment, pulse->current_ma, why);
+        const enum status status =
+            recruitment_takes_current(&parameters->recruitment, pulse->current_ma, why);
         if (status != STATUS_OK) return status;
     }
     return STATUS_OK;
@@ -82,7 +88,8 @@ static void tell_periods(const struct train_pulse *pulses, size_t count, bool *s
         if (i == 0) continue;
         const double before = pulses[i].time_ms - pulses[i - 1].time_ms;
         double after = 0;
-        for (size_t j = i + 1; j < count && j <= i + 2; j++) after = fmax(after, pulses[j].time_ms - pulses[j - 1].time_ms);
+        for (size_t j = i + 1; j < count && j <= i + 2; j++)
+            after = fmax(after, pulses[j].time_ms - pulses[j - 1].time_ms);
         if (i + 1 == count && i >= 2) after = pulses[i - 1].time_ms - pulses[i - 2].time_ms;
         same[i] = before <= SAME_PERIOD_MS && before < 0.5 * after;
     }
@@ -92,14 +99,16 @@ static void tell_periods(const struct train_pulse *pulses, size_t count, bool *s
 static void period_end(struct pass *pass)
 {
     const double now = pass->engine.time_ms;
-    if (pass->period_start_ms >= pass->window_from_ms - 1e-9 && now <= pass->window_to_ms + 1e-9 && now > pass->period_start_ms) {
+    if (pass->period_start_ms >= pass->window_from_ms - 1e-9 && now <= pass->window_to_ms + 1e-9 &&
+        now > pass->period_start_ms) {
         const double range = pass->period.greatest - pass->period.least;
         if (!(range <= pass->ripple_n)) pass->ripple_n = range;
     }
     pass->period_start_ms = (double)NAN;
 }
 
-/* Advances, gathering; never across a corner of the window. Force after until - delay is not shown and not gathered. */
+/* Advances, gathering; never across a corner of the window. Force after until - delay is not shown and not
+ * gathered. */
 static void pass_advance(struct pass *pass, double to_ms)
 {
     while (pass->engine.time_ms < to_ms) {
@@ -113,7 +122,8 @@ static void pass_advance(struct pass *pass, double to_ms)
         if (now < corner[2]) gather_add(&pass->whole, &piece);
         if (now >= corner[0] && now < corner[1]) gather_add(&pass->window, &piece);
         gather_add(&pass->period, &piece);
-        if (now < corner[1] && end >= corner[1]) pass->window_potentiation = muscle_potentiation(&pass->engine.state);
+        if (now < corner[1] && end >= corner[1])
+            pass->window_potentiation = muscle_potentiation(&pass->engine.state);
     }
 }
 
@@ -126,7 +136,8 @@ static void pass_pulse(struct pass *pass, size_t i)
         pass->period = gather_empty();
         pass->period_start_ms = pass->engine.time_ms;
     }
-    engine_pulse(&pass->engine, recruitment_of(&pass->engine.muscle.parameters.recruitment, pulse->duration_us, pulse->current_ma));
+    engine_pulse(&pass->engine, recruitment_of(&pass->engine.muscle.parameters.recruitment,
+                                               pulse->duration_us, pulse->current_ma));
     pass->last_given = i + 1;
     if (pulse->time_ms <= pass->window_to_ms || i == 0) {
         pass->last_duration_us = pulse->duration_us;
@@ -141,7 +152,8 @@ static void pass_run(struct pass *pass, struct trace *trace)
     size_t pulse = 0, state = 0, force = 0;
     while (state < trace->samples || force < trace->samples) {
         const double state_ms = state < trace->samples ? (double)state * pass->step_ms : (double)INFINITY;
-        const double force_ms = force < trace->samples ? (double)force * pass->step_ms - pass->delay_ms : (double)INFINITY;
+        const double force_ms =
+            force < trace->samples ? (double)force * pass->step_ms - pass->delay_ms : (double)INFINITY;
         const double sample_ms = fmin(state_ms, force_ms);
         if (pulse < pass->count && pass->pulses[pulse].time_ms <= sample_ms) {
             pass_pulse(pass, pulse++);
@@ -156,12 +168,15 @@ static void pass_run(struct pass *pass, struct trace *trace)
         trace->capacity[state] = muscle_capacity(&pass->engine.muscle, &pass->engine.state);
         trace->potentiation[state] = muscle_potentiation(&pass->engine.state);
         trace->activation[state] = muscle_activation(&pass->engine.muscle, &pass->engine.state);
-        trace->force_remaining_20[state] = muscle_force_remaining(&pass->engine.muscle, &pass->engine.state, 20);
-        trace->force_remaining_50[state] = muscle_force_remaining(&pass->engine.muscle, &pass->engine.state, 50);
+        trace->force_remaining_20[state] =
+            muscle_force_remaining(&pass->engine.muscle, &pass->engine.state, 20);
+        trace->force_remaining_50[state] =
+            muscle_force_remaining(&pass->engine.muscle, &pass->engine.state, 50);
         state++;
     }
     /* a window may end after the last sample */
-    while (pulse < pass->count && pass->pulses[pulse].time_ms <= pass->window_to_ms) pass_pulse(pass, pulse++);
+    while (pulse < pass->count && pass->pulses[pulse].time_ms <= pass->window_to_ms)
+        pass_pulse(pass, pulse++);
     pass_advance(pass, pass->window_to_ms);
 }
 
@@ -178,14 +193,17 @@ static double half_relaxation(struct pass *pass, double peak_ms)
     while (engine->time_ms < from_ms + RELAXATION_MS_MAX) {
         const double f0 = engine_force_n(engine), d0 = engine_force_slope(engine), at_ms = engine->time_ms;
         engine_step(engine, from_ms + RELAXATION_MS_MAX);
-        const double f1 = engine_force_n(engine), d1 = engine_force_slope(engine), h = engine->time_ms - at_ms;
+        const double f1 = engine_force_n(engine), d1 = engine_force_slope(engine),
+                     h = engine->time_ms - at_ms;
         if (f1 > half_n) continue;
         double low = 0, high = 1; /* of the cubic through both ends */
         for (int i = 0; i < 60; i++) {
             const double s = 0.5 * (low + high), rise = (f1 - f0) / h;
             const double force = f0 + h * s * (d0 + s * (3 * rise - 2 * d0 - d1 + s * (d0 + d1 - 2 * rise)));
-            if (force > half_n) low = s;
-            else high = s;
+            if (force > half_n)
+                low = s;
+            else
+                high = s;
         }
         return at_ms + high * h - from_ms;
     }
@@ -199,9 +217,11 @@ static double twitch_peak_n(const struct pass *pass, struct engine *twitch, bool
     engine_init(twitch, muscle, exact, NULL);
     if (muscle->parameters.has_potentiation)
         for (unsigned i = 0; i < LANES_MAX; i++) twitch->state.P[i] = pass->window_potentiation;
-    engine_pulse(twitch, recruitment_of(&muscle->parameters.recruitment, pass->last_duration_us, pass->last_current_ma));
+    engine_pulse(twitch, recruitment_of(&muscle->parameters.recruitment, pass->last_duration_us,
+                                        pass->last_current_ma));
     struct gather gather = gather_empty();
-    const double slowest_ms = 6 * muscle->parameters.tau1_rest_ms + muscle->parameters.tau2_ms + 20 * muscle->parameters.tau_c_ms;
+    const double slowest_ms =
+        6 * muscle->parameters.tau1_rest_ms + muscle->parameters.tau2_ms + 20 * muscle->parameters.tau_c_ms;
     gather_advance(&gather, twitch, 3 * slowest_ms);
     return gather.greatest;
 }
@@ -230,8 +250,9 @@ static void summarise(struct pass *pass, const struct trace *trace, bool exact, 
     summary->window_ms[1] = pass->window_to_ms;
 }
 
-static enum status pass_init(struct pass *pass, const struct muscle *muscle, const struct train_pulse *pulses, size_t count,
-                             const struct motion *motion, const struct trace_options *options, struct message *why)
+static enum status pass_init(struct pass *pass, const struct muscle *muscle, const struct train_pulse *pulses,
+                             size_t count, const struct motion *motion, const struct trace_options *options,
+                             struct message *why)
 {
     memset(pass, 0, sizeof *pass);
     engine_init(&pass->engine, muscle, options->exact, motion);
@@ -248,21 +269,26 @@ static enum status pass_init(struct pass *pass, const struct muscle *muscle, con
     pass->whole = pass->window = pass->period = gather_empty();
     pass->period_start_ms = pass->ripple_n = (double)NAN;
     pass->window_potentiation = muscle_potentiation(&pass->engine.state);
-    if (!(pass->until_ms >= 0) || !isfinite(pass->until_ms) || !(pass->until_ms / pass->step_ms < SAMPLES_MAX))
-        return status_fail(why, STATUS_REFUSED, "a trace until %g ms each %g ms is not possible: at most %d samples", pass->until_ms,
-                           pass->step_ms, (int)SAMPLES_MAX);
+    if (!(pass->until_ms >= 0) || !isfinite(pass->until_ms) ||
+        !(pass->until_ms / pass->step_ms < SAMPLES_MAX))
+        return status_fail(why, STATUS_REFUSED,
+                           "a trace until %g ms each %g ms is not possible: at most %d samples",
+                           pass->until_ms, pass->step_ms, (int)SAMPLES_MAX);
     if (windowed && !(pass->window_to_ms > pass->window_from_ms))
-        return status_fail(why, STATUS_REFUSED, "the window %g to %g ms is empty", pass->window_from_ms, pass->window_to_ms);
+        return status_fail(why, STATUS_REFUSED, "the window %g to %g ms is empty", pass->window_from_ms,
+                           pass->window_to_ms);
     pass->same_period = malloc((count + 1) * sizeof *pass->same_period);
     if (!pass->same_period) return status_fail(why, STATUS_INTERNAL, "out of memory");
-    if (options->same_period) memcpy(pass->same_period, options->same_period, count * sizeof *pass->same_period);
-    else tell_periods(pulses, count, pass->same_period);
+    if (options->same_period)
+        memcpy(pass->same_period, options->same_period, count * sizeof *pass->same_period);
+    else
+        tell_periods(pulses, count, pass->same_period);
     return STATUS_OK;
 }
 
-enum status predict_trace(const struct muscle_parameters *parameters, const struct train_pulse *pulses, size_t count,
-                          const struct motion *motion, const struct trace_options *options, struct trace *trace,
-                          struct trace_summary *summary, struct message *why)
+enum status predict_trace(const struct muscle_parameters *parameters, const struct train_pulse *pulses,
+                          size_t count, const struct motion *motion, const struct trace_options *options,
+                          struct trace *trace, struct trace_summary *summary, struct message *why)
 {
     struct pass pass;
     memset(trace, 0, sizeof *trace);
@@ -270,7 +296,8 @@ enum status predict_trace(const struct muscle_parameters *parameters, const stru
     struct predictor *predictor = predictor_new(parameters, options->exact, motion, why);
     if (!predictor) return STATUS_REFUSED;
     enum status status = check_pulses(parameters, pulses, count, why);
-    if (status == STATUS_OK) status = pass_init(&pass, &predictor->engine.muscle, pulses, count, motion, options, why);
+    if (status == STATUS_OK)
+        status = pass_init(&pass, &predictor->engine.muscle, pulses, count, motion, options, why);
     predictor_free(predictor);
     if (status != STATUS_OK) return status;
     status = trace_make(trace, (size_t)(pass.until_ms / pass.step_ms * (1 + 1e-12)) + 1, why);

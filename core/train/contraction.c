@@ -1,6 +1,7 @@
-/* Contractions into pulses and segments. The goal of this code: one reading of "ramp, hold, ramp down, trim, opening, pairs", exact for
- * prediction and on a stimulator's steps for everything that is given to a person.
- * Rules: this project's (house chapter, "Trains"). A period belongs to a part of the contraction by the time of its first pulse. */
+/* Contractions into pulses and segments. The goal of this code: one reading of "ramp, hold, ramp down, trim,
+ * opening, pairs", exact for prediction and on a stimulator's steps for everything that is given to a person.
+ * Rules: this project's (house chapter, "Trains"). A period belongs to a part of the contraction by the time
+ * of its first pulse. */
 #include "core/train/contraction.h"
 
 #include "core/muscle/recruitment.h"
@@ -14,7 +15,8 @@ enum { PERIODS_MAX = 10000000, SEGMENT_PULSES_MAX = 65535 };
 
 uint32_t train_period_us(double frequency_pps)
 {
-    /* a rate such as 10^6/7 is not exact in a double: what is within rounding of a whole period is that period */
+    /* a rate such as 10^6/7 is not exact in a double: what is within rounding of a whole period is that
+     * period */
     return (uint32_t)ceil(1e6 / frequency_pps * (1 - 1e-12));
 }
 
@@ -35,7 +37,8 @@ static struct grid_course grid_course(const struct contraction *contraction)
     struct grid_course course = {.period_us = train_period_us(contraction->frequency_pps),
                                  .gap_us = whole_us(contraction->opening_gap_ms),
                                  .other_pulses = contraction->pairs ? 2 : 1};
-    course.first_pulses = contraction->opening > course.other_pulses ? contraction->opening : course.other_pulses;
+    course.first_pulses =
+        contraction->opening > course.other_pulses ? contraction->opening : course.other_pulses;
     /* in a train of pairs a first pair is a pair like the others */
     if (course.first_pulses > course.other_pulses || !contraction->pairs)
         course.anchor_us = (uint64_t)(course.first_pulses - 1) * course.gap_us;
@@ -76,20 +79,23 @@ static double trim_or(double trim, double value)
     return isnan(trim) ? value : trim;
 }
 
-static enum status check(const struct contraction *contraction, const struct recruitment *recruitment, struct message *why)
+static enum status check(const struct contraction *contraction, const struct recruitment *recruitment,
+                         struct message *why)
 {
     const double end_ma = trim_or(contraction->trim_current_ma, contraction->current_ma);
     const enum status status = recruitment_takes_current(recruitment, contraction->current_ma, why);
     if (status != STATUS_OK) return status;
     if (contraction->gaps) return STATUS_OK;
     if (!(contraction->frequency_pps > 0) || !(contraction->frequency_pps <= 1e6))
-        return status_fail(why, STATUS_REFUSED, "frequency_pps holds %g, it may hold a number above 0", contraction->frequency_pps);
+        return status_fail(why, STATUS_REFUSED, "frequency_pps holds %g, it may hold a number above 0",
+                           contraction->frequency_pps);
     if (contraction->opening < 1 || contraction->opening > 3)
-        return status_fail(why, STATUS_REFUSED, "an opening has %u pulses, it may have 1 to 3", contraction->opening);
+        return status_fail(why, STATUS_REFUSED, "an opening has %u pulses, it may have 1 to 3",
+                           contraction->opening);
     const struct grid_course course = grid_course(contraction);
     if (course.first_pulses > 1 && (course.gap_us < 1 || course.gap_us >= course.period_us))
-        return status_fail(why, STATUS_REFUSED, "a gap of %u us does not fit into a period of %u us", course.gap_us,
-                           course.period_us);
+        return status_fail(why, STATUS_REFUSED, "a gap of %u us does not fit into a period of %u us",
+                           course.gap_us, course.period_us);
     const struct contraction_periods count = contraction_count(contraction);
     if ((uint64_t)count.ramp_up + count.hold + count.ramp_down >= PERIODS_MAX)
         return status_fail(why, STATUS_REFUSED, "a contraction has more than %d periods", (int)PERIODS_MAX);
@@ -98,12 +104,14 @@ static enum status check(const struct contraction *contraction, const struct rec
 
 /* Settings of period k, unrounded. */
 static void exact_settings(const struct contraction *contraction, const struct recruitment *recruitment,
-                           const struct contraction_periods *count, uint32_t k, double *duration_us, double *current_ma)
+                           const struct contraction_periods *count, uint32_t k, double *duration_us,
+                           double *current_ma)
 {
     const double end_us = trim_or(contraction->trim_duration_us, contraction->duration_us);
     const double end_ma = trim_or(contraction->trim_current_ma, contraction->current_ma);
     if (k < count->ramp_up) {
-        const struct ramp_end end = ramp_end_of(recruitment, contraction->duration_us, contraction->current_ma);
+        const struct ramp_end end =
+            ramp_end_of(recruitment, contraction->duration_us, contraction->current_ma);
         *duration_us = ramp_duration_us(recruitment, &end, contraction->ramp_up.shape, k + 1, count->ramp_up);
         *current_ma = contraction->current_ma;
     } else if (k < count->ramp_up + count->hold) {
@@ -114,27 +122,32 @@ static void exact_settings(const struct contraction *contraction, const struct r
     } else {
         const uint32_t i = k - count->ramp_up - count->hold; /* 0 is the strongest */
         const struct ramp_end end = ramp_end_of(recruitment, end_us, end_ma);
-        *duration_us = ramp_duration_us(recruitment, &end, contraction->ramp_down.shape, count->ramp_down - i, count->ramp_down);
+        *duration_us = ramp_duration_us(recruitment, &end, contraction->ramp_down.shape, count->ramp_down - i,
+                                        count->ramp_down);
         *current_ma = end_ma;
     }
 }
 
-static enum status gap_pulses(const struct contraction *contraction, struct train_pulse *pulses, size_t capacity, size_t *count,
-                              struct message *why)
+static enum status gap_pulses(const struct contraction *contraction, struct train_pulse *pulses,
+                              size_t capacity, size_t *count, struct message *why)
 {
     uint64_t at_us = 0;
     *count = contraction->gaps + 1;
-    if (*count > capacity) return status_fail(why, STATUS_REFUSED, "%zu pulses are needed, there is room for %zu", *count, capacity);
+    if (*count > capacity)
+        return status_fail(why, STATUS_REFUSED, "%zu pulses are needed, there is room for %zu", *count,
+                           capacity);
     for (size_t i = 0; i < *count; i++) {
-        pulses[i] = (struct train_pulse){
-            .time_ms = (double)at_us / 1000, .duration_us = contraction->duration_us, .current_ma = contraction->current_ma};
+        pulses[i] = (struct train_pulse){.time_ms = (double)at_us / 1000,
+                                         .duration_us = contraction->duration_us,
+                                         .current_ma = contraction->current_ma};
         if (i < contraction->gaps) at_us += whole_us(contraction->gaps_ms[i]);
     }
     return STATUS_OK;
 }
 
 enum status contraction_pulses(const struct contraction *contraction, const struct recruitment *recruitment,
-                               struct train_pulse *pulses, size_t capacity, size_t *count, struct message *why)
+                               struct train_pulse *pulses, size_t capacity, size_t *count,
+                               struct message *why)
 {
     *count = 0;
     const enum status status = check(contraction, recruitment, why);
@@ -145,7 +158,9 @@ enum status contraction_pulses(const struct contraction *contraction, const stru
     const uint32_t periods = parts.ramp_up + parts.hold + parts.ramp_down;
     if (periods == 0) return status_fail(why, STATUS_REFUSED, "a contraction has neither ramp nor hold");
     *count = course.first_pulses + (size_t)(periods - 1) * course.other_pulses;
-    if (*count > capacity) return status_fail(why, STATUS_REFUSED, "%zu pulses are needed, there is room for %zu", *count, capacity);
+    if (*count > capacity)
+        return status_fail(why, STATUS_REFUSED, "%zu pulses are needed, there is room for %zu", *count,
+                           capacity);
     size_t at = 0;
     for (uint32_t k = 0; k < periods; k++) {
         double duration_us, current_ma;
@@ -153,13 +168,15 @@ enum status contraction_pulses(const struct contraction *contraction, const stru
         const uint32_t inside = k == 0 ? course.first_pulses : course.other_pulses;
         for (uint32_t i = 0; i < inside; i++) {
             const uint64_t at_us = course_start_us(&course, k) + (uint64_t)i * course.gap_us;
-            pulses[at++] = (struct train_pulse){.time_ms = (double)at_us / 1000, .duration_us = duration_us, .current_ma = current_ma};
+            pulses[at++] = (struct train_pulse){
+                .time_ms = (double)at_us / 1000, .duration_us = duration_us, .current_ma = current_ma};
         }
     }
     return STATUS_OK;
 }
 
-/* A document's number in the grid's integers, down to the grid; 0: no pulse. The hair is for decimals that no double holds. */
+/* A document's number in the grid's integers, down to the grid; 0: no pulse. The hair is for decimals that no
+ * double holds. */
 static uint32_t on_grid(double value, uint32_t from, uint32_t step)
 {
     if (!(value > 0)) return 0;
@@ -171,10 +188,13 @@ struct hold_settings {
     uint32_t duration_us[2], current_ua[2];
 };
 
-static struct hold_settings hold_settings(const struct contraction *contraction, const struct train_grid *grid)
+static struct hold_settings hold_settings(const struct contraction *contraction,
+                                          const struct train_grid *grid)
 {
-    const double us[2] = {contraction->duration_us, trim_or(contraction->trim_duration_us, contraction->duration_us)};
-    const double ma[2] = {contraction->current_ma, trim_or(contraction->trim_current_ma, contraction->current_ma)};
+    const double us[2] = {contraction->duration_us,
+                          trim_or(contraction->trim_duration_us, contraction->duration_us)};
+    const double ma[2] = {contraction->current_ma,
+                          trim_or(contraction->trim_current_ma, contraction->current_ma)};
     struct hold_settings hold;
     for (int i = 0; i < 2; i++) {
         hold.duration_us[i] = on_grid(us[i], grid->duration_from_us, grid->duration_step_us);
@@ -185,7 +205,8 @@ static struct hold_settings hold_settings(const struct contraction *contraction,
 
 /* One ramp: ideal durations of the pulses that are given, then their pieces. */
 static enum status compile_ramp(const struct contraction *contraction, const struct recruitment *recruitment,
-                                const struct train_grid *grid, bool down, struct ramp *ramp, struct message *why)
+                                const struct train_grid *grid, bool down, struct ramp *ramp,
+                                struct message *why)
 {
     const struct grid_course course = grid_course(contraction);
     const struct contraction_periods parts = contraction_count(contraction);
@@ -201,15 +222,17 @@ static enum status compile_ramp(const struct contraction *contraction, const str
     for (uint32_t i = 1; i <= n; i++) {
         const uint32_t place = down ? n + 1 - i : i;
         const double ideal = ramp_duration_us(recruitment, &end, ramp->shape, place, n);
-        if (on_grid(ideal, grid->duration_from_us, grid->duration_step_us) == 0) skipped++;
-        else ideal_us[given++] = ideal;
+        if (on_grid(ideal, grid->duration_from_us, grid->duration_step_us) == 0)
+            skipped++;
+        else
+            ideal_us[given++] = ideal;
     }
     /* the opening is the first period; a ramp down opens where there is nothing before it */
     const bool opens = down ? parts.ramp_up == 0 && parts.hold == 0 : skipped == 0;
     const uint32_t first = opens ? course.first_pulses : course.other_pulses;
     const uint32_t least = grid->duration_from_us > 0 ? grid->duration_from_us : 1;
-    ramp->pieces =
-        ramp_pieces(ideal_us, given, hold_us, least, current_ua, first, course.other_pulses, grid, ramp->piece);
+    ramp->pieces = ramp_pieces(ideal_us, given, hold_us, least, current_ua, first, course.other_pulses, grid,
+                               ramp->piece);
     free(ideal_us);
     return STATUS_OK;
 }
@@ -269,15 +292,17 @@ struct making {
     uint32_t next_period;
 };
 
-static enum status add_segment(struct making *making, uint32_t pulses, uint32_t from_us, uint32_t to_us, uint32_t from_ua,
-                               uint32_t to_ua, struct message *why)
+static enum status add_segment(struct making *making, uint32_t pulses, uint32_t from_us, uint32_t to_us,
+                               uint32_t from_ua, uint32_t to_ua, struct message *why)
 {
     const struct grid_course *course = making->course;
     const bool opens = making->next_period == 0;
     const uint32_t first = opens ? course->first_pulses : course->other_pulses;
     if (pulses == 0) return STATUS_OK;
-    if (pulses > SEGMENT_PULSES_MAX || from_us > UINT16_MAX || to_us > UINT16_MAX || course->gap_us > UINT16_MAX)
-        return status_fail(why, STATUS_REFUSED, "%u pulses of %u to %u us with gaps of %u us do not fit into one segment", pulses,
+    if (pulses > SEGMENT_PULSES_MAX || from_us > UINT16_MAX || to_us > UINT16_MAX ||
+        course->gap_us > UINT16_MAX)
+        return status_fail(why, STATUS_REFUSED,
+                           "%u pulses of %u to %u us with gaps of %u us do not fit into one segment", pulses,
                            from_us, to_us, course->gap_us);
     if (making->count == making->capacity)
         return status_fail(why, STATUS_REFUSED, "more than %zu segments are needed", making->capacity);
@@ -301,15 +326,16 @@ static enum status add_ramp(struct making *making, const struct ramp *ramp, stru
 {
     for (size_t i = 0; i < ramp->pieces; i++) {
         const struct ramp_piece *piece = &ramp->piece[i];
-        const enum status status =
-            add_segment(making, piece->pulses, piece->from_us, piece->to_us, piece->from_ua, piece->to_ua, why);
+        const enum status status = add_segment(making, piece->pulses, piece->from_us, piece->to_us,
+                                               piece->from_ua, piece->to_ua, why);
         if (status != STATUS_OK) return status;
     }
     return STATUS_OK;
 }
 
 /* Time of the last pulse that the segments give; false where they give none. */
-static bool last_given(const struct segment *segments, size_t count, const struct train_grid *grid, uint64_t *last_us)
+static bool last_given(const struct segment *segments, size_t count, const struct train_grid *grid,
+                       uint64_t *last_us)
 {
     bool any = false;
     for (size_t i = count; i-- > 0 && !any;) {
@@ -324,32 +350,36 @@ static bool last_given(const struct segment *segments, size_t count, const struc
     return any;
 }
 
-static enum status gap_segments(const struct contraction *contraction, const struct train_grid *grid, struct making *making,
-                                struct message *why)
+static enum status gap_segments(const struct contraction *contraction, const struct train_grid *grid,
+                                struct making *making, struct message *why)
 {
     const struct hold_settings hold = hold_settings(contraction, grid);
     uint64_t at_us = making->origin_us;
     if (hold.duration_us[0] > UINT16_MAX)
-        return status_fail(why, STATUS_REFUSED, "a duration of %u us does not fit into a segment", hold.duration_us[0]);
+        return status_fail(why, STATUS_REFUSED, "a duration of %u us does not fit into a segment",
+                           hold.duration_us[0]);
     for (size_t i = 0; i <= contraction->gaps;) {
         /* equal gaps in a row are one segment */
         const uint32_t period_us = i < contraction->gaps ? whole_us(contraction->gaps_ms[i]) : 1;
         size_t run = 1;
-        while (i + run <= contraction->gaps && whole_us(contraction->gaps_ms[i + run - 1]) == period_us && run < SEGMENT_PULSES_MAX)
+        while (i + run <= contraction->gaps && whole_us(contraction->gaps_ms[i + run - 1]) == period_us &&
+               run < SEGMENT_PULSES_MAX)
             run++;
         if (making->count == making->capacity)
             return status_fail(why, STATUS_REFUSED, "more than %zu segments are needed", making->capacity);
-        /* a run of two that shares its second pulse with a longer run later is still right: the next segment starts after it */
-        making->segments[making->count++] = (struct segment){.start_us = at_us,
-                                                             .period_us = period_us,
-                                                             .current_from_ua = hold.current_ua[0],
-                                                             .current_to_ua = hold.current_ua[0],
-                                                             .count = (uint16_t)run,
-                                                             .duration_from_us = (uint16_t)hold.duration_us[0],
-                                                             .duration_to_us = (uint16_t)hold.duration_us[0],
-                                                             .channel = making->channel,
-                                                             .pattern = SEGMENT_SINGLES,
-                                                             .opening = 1};
+        /* a run of two that shares its second pulse with a longer run later is still right: the next segment
+         * starts after it */
+        making->segments[making->count++] =
+            (struct segment){.start_us = at_us,
+                             .period_us = period_us,
+                             .current_from_ua = hold.current_ua[0],
+                             .current_to_ua = hold.current_ua[0],
+                             .count = (uint16_t)run,
+                             .duration_from_us = (uint16_t)hold.duration_us[0],
+                             .duration_to_us = (uint16_t)hold.duration_us[0],
+                             .channel = making->channel,
+                             .pattern = SEGMENT_SINGLES,
+                             .opening = 1};
         at_us += (uint64_t)(run - 1) * period_us;
         i += run;
         if (i <= contraction->gaps) at_us += whole_us(contraction->gaps_ms[i - 1]);
@@ -357,39 +387,45 @@ static enum status gap_segments(const struct contraction *contraction, const str
     return STATUS_OK;
 }
 
-static enum status regular_segments(const struct contraction *contraction, const struct train_grid *grid, struct making *making,
-                                    struct message *why)
+static enum status regular_segments(const struct contraction *contraction, const struct train_grid *grid,
+                                    struct making *making, struct message *why)
 {
     const struct contraction_periods count = contraction_count(contraction);
     const struct hold_settings hold = hold_settings(contraction, grid);
-    const uint32_t up = piece_periods(&contraction->ramp_up, making->course, opening_given(contraction, making->course));
+    const uint32_t up =
+        piece_periods(&contraction->ramp_up, making->course, opening_given(contraction, making->course));
     if (up > count.ramp_up)
-        return status_fail(why, STATUS_REFUSED, "the pieces of ramp_up have %u periods, its %g ms have %u", up, contraction->ramp_up.ms,
-                           count.ramp_up);
+        return status_fail(why, STATUS_REFUSED, "the pieces of ramp_up have %u periods, its %g ms have %u",
+                           up, contraction->ramp_up.ms, count.ramp_up);
     making->next_period = count.ramp_up - up;
     making->origin_us -= course_start_us(making->course, making->next_period);
     enum status status = add_ramp(making, &contraction->ramp_up, why);
     if (status != STATUS_OK) return status;
     const bool opens = making->next_period == 0;
     const uint32_t each = making->course->other_pulses;
-    const uint32_t pulses = count.hold * each + (opens && count.hold > 0 ? making->course->first_pulses - each : 0);
-    status = add_segment(making, pulses, hold.duration_us[0], hold.duration_us[1], hold.current_ua[0], hold.current_ua[1], why);
+    const uint32_t pulses =
+        count.hold * each + (opens && count.hold > 0 ? making->course->first_pulses - each : 0);
+    status = add_segment(making, pulses, hold.duration_us[0], hold.duration_us[1], hold.current_ua[0],
+                         hold.current_ua[1], why);
     if (status != STATUS_OK) return status;
     return add_ramp(making, &contraction->ramp_down, why);
 }
 
-enum status contraction_segments(const struct contraction *contraction, const struct train_grid *grid, uint64_t start_us,
-                                 uint8_t channel, struct segment *segments, size_t capacity, size_t *count,
-                                 uint64_t *last_pulse_us, struct message *why)
+enum status contraction_segments(const struct contraction *contraction, const struct train_grid *grid,
+                                 uint64_t start_us, uint8_t channel, struct segment *segments,
+                                 size_t capacity, size_t *count, uint64_t *last_pulse_us, struct message *why)
 {
     *count = 0;
     const struct recruitment any = {.law = RECRUITMENT_FULL};
     enum status status = check(contraction, &any, why);
     if (status != STATUS_OK) return status;
     const struct hold_settings hold = hold_settings(contraction, grid);
-    if (hold.duration_us[0] == 0 || hold.current_ua[0] == 0 || hold.duration_us[1] == 0 || hold.current_ua[1] == 0)
-        return status_fail(why, STATUS_REFUSED, "%g us at %g mA is below what the stimulator gives (from %u us and %g mA)",
-                           contraction->duration_us, contraction->current_ma, grid->duration_from_us, grid->current_from_ua / 1000.0);
+    if (hold.duration_us[0] == 0 || hold.current_ua[0] == 0 || hold.duration_us[1] == 0 ||
+        hold.current_ua[1] == 0)
+        return status_fail(why, STATUS_REFUSED,
+                           "%g us at %g mA is below what the stimulator gives (from %u us and %g mA)",
+                           contraction->duration_us, contraction->current_ma, grid->duration_from_us,
+                           grid->current_from_ua / 1000.0);
     const struct grid_course course = contraction->gaps ? (struct grid_course){0} : grid_course(contraction);
     struct making making = {.contraction = contraction,
                             .course = &course,
@@ -397,7 +433,8 @@ enum status contraction_segments(const struct contraction *contraction, const st
                             .channel = channel,
                             .segments = segments,
                             .capacity = capacity};
-    status = contraction->gaps ? gap_segments(contraction, grid, &making, why) : regular_segments(contraction, grid, &making, why);
+    status = contraction->gaps ? gap_segments(contraction, grid, &making, why)
+                               : regular_segments(contraction, grid, &making, why);
     if (status != STATUS_OK) return status;
     if (!last_given(segments, making.count, grid, last_pulse_us))
         return status_fail(why, STATUS_REFUSED, "a contraction gives no pulse");

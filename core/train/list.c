@@ -1,5 +1,6 @@
-/* Contractions one after another. The goal of this code: repeats and rests are laid out once, for prediction, fit and the pulse file.
- * rest_ms runs from the last pulse given to the next first pulse given, in whole microseconds. */
+/* Contractions one after another. The goal of this code: repeats and rests are laid out once, for prediction,
+ * fit and the pulse file. rest_ms runs from the last pulse given to the next first pulse given, in whole
+ * microseconds. */
 #include "core/train/contraction.h"
 
 #include <math.h>
@@ -18,7 +19,8 @@ struct layout {
 static enum status make_room(struct layout *layout, size_t more, struct message *why)
 {
     const size_t needed = layout->count + more;
-    if (needed > layout->most) return status_fail(why, STATUS_REFUSED, "a train has more than %zu pulses", layout->most);
+    if (needed > layout->most)
+        return status_fail(why, STATUS_REFUSED, "a train has more than %zu pulses", layout->most);
     if (needed <= layout->capacity) return STATUS_OK;
     const size_t capacity = needed > 2 * layout->capacity ? needed : 2 * layout->capacity;
     struct train_pulse *pulses = realloc(layout->pulses, capacity * sizeof *pulses);
@@ -30,7 +32,8 @@ static enum status make_room(struct layout *layout, size_t more, struct message 
     return STATUS_OK;
 }
 
-/* Marks the pulses from `first` on that share the period of the one before, given single pulses of the first and of other periods. */
+/* Marks the pulses from `first` on that share the period of the one before, given single pulses of the first
+ * and of other periods. */
 static void mark_periods(struct layout *layout, size_t first, size_t opening, size_t each)
 {
     for (size_t i = first, next = first; i < layout->count; i++) {
@@ -39,8 +42,8 @@ static void mark_periods(struct layout *layout, size_t first, size_t opening, si
     }
 }
 
-static enum status add_exact(struct layout *layout, const struct contraction *contraction, const struct recruitment *recruitment,
-                             struct message *why)
+static enum status add_exact(struct layout *layout, const struct contraction *contraction,
+                             const struct recruitment *recruitment, struct message *why)
 {
     size_t needed = 0;
     enum status status = contraction_pulses(contraction, recruitment, NULL, 0, &needed, why);
@@ -51,13 +54,16 @@ static enum status add_exact(struct layout *layout, const struct contraction *co
     status = contraction_pulses(contraction, recruitment, layout->pulses + first, needed, &needed, why);
     if (status != STATUS_OK) return status;
     layout->count += needed;
-    mark_periods(layout, first, contraction->gaps ? 1 : contraction->opening > each ? contraction->opening : each,
+    mark_periods(layout, first,
+                 contraction->gaps             ? 1
+                 : contraction->opening > each ? contraction->opening
+                                               : each,
                  contraction->gaps ? 1 : each);
     return STATUS_OK;
 }
 
-static enum status add_segment_pulses(struct layout *layout, const struct segment *segment, const struct train_grid *grid,
-                                      struct message *why)
+static enum status add_segment_pulses(struct layout *layout, const struct segment *segment,
+                                      const struct train_grid *grid, struct message *why)
 {
     struct segment_cursor cursor;
     struct pulse pulse;
@@ -66,16 +72,20 @@ static enum status add_segment_pulses(struct layout *layout, const struct segmen
     segment_begin(&cursor, segment, grid);
     uint32_t period = 0;
     while (segment_next(&cursor, &pulse)) {
-        while (period + 1 < segment_periods(segment) && segment_period_start(segment, period + 1) <= pulse.at_us) period++;
+        while (period + 1 < segment_periods(segment) &&
+               segment_period_start(segment, period + 1) <= pulse.at_us)
+            period++;
         layout->same_period[layout->count] = pulse.at_us != segment_period_start(segment, period);
-        layout->pulses[layout->count++] = (struct train_pulse){
-            .time_ms = (double)pulse.at_us / 1000, .duration_us = pulse.duration_us, .current_ma = pulse.current_ua / 1000.0};
+        layout->pulses[layout->count++] = (struct train_pulse){.time_ms = (double)pulse.at_us / 1000,
+                                                               .duration_us = pulse.duration_us,
+                                                               .current_ma = pulse.current_ua / 1000.0};
     }
     return STATUS_OK;
 }
 
-static enum status add_compiled(struct layout *layout, const struct contraction *contraction, const struct recruitment *recruitment,
-                                const struct train_grid *grid, struct message *why)
+static enum status add_compiled(struct layout *layout, const struct contraction *contraction,
+                                const struct recruitment *recruitment, const struct train_grid *grid,
+                                struct message *why)
 {
     struct contraction copy = *contraction;
     const size_t needed = contraction->gaps ? contraction->gaps + 1 : (size_t)CONTRACTION_SEGMENTS_MAX;
@@ -90,17 +100,20 @@ static enum status add_compiled(struct layout *layout, const struct contraction 
     size_t count = 0;
     uint64_t last_us;
     status = contraction_segments(&copy, grid, 0, 1, layout->segments, needed, &count, &last_us, why);
-    for (size_t i = 0; i < count && status == STATUS_OK; i++) status = add_segment_pulses(layout, &layout->segments[i], grid, why);
+    for (size_t i = 0; i < count && status == STATUS_OK; i++)
+        status = add_segment_pulses(layout, &layout->segments[i], grid, why);
     return status;
 }
 
-/* Copies the pulses first .. end - 1 `repeat` - 1 times behind themselves, each after a rest. Times of the first copy are from 0. */
-static enum status repeat_pulses(struct layout *layout, size_t first, const struct contraction *contraction, uint64_t start_us,
-                                 uint64_t *next_us, struct message *why)
+/* Copies the pulses first .. end - 1 `repeat` - 1 times behind themselves, each after a rest. Times of the
+ * first copy are from 0. */
+static enum status repeat_pulses(struct layout *layout, size_t first, const struct contraction *contraction,
+                                 uint64_t start_us, uint64_t *next_us, struct message *why)
 {
     const size_t each = layout->count - first;
     const unsigned repeat = contraction->repeat > 0 ? contraction->repeat : 1;
-    if (each > layout->most / repeat) return status_fail(why, STATUS_REFUSED, "a train has more than %zu pulses", layout->most);
+    if (each > layout->most / repeat)
+        return status_fail(why, STATUS_REFUSED, "a train has more than %zu pulses", layout->most);
     const enum status status = make_room(layout, each * (repeat - 1), why);
     if (status != STATUS_OK) return status;
     const uint64_t length_us = (uint64_t)llround(1000 * layout->pulses[layout->count - 1].time_ms);
@@ -133,9 +146,10 @@ static enum status first_hold(const struct contraction *contraction, const struc
     return STATUS_OK;
 }
 
-enum status contraction_list_pulses(const struct contraction *list, size_t contractions, const struct recruitment *recruitment,
-                                    const struct train_grid *grid, size_t pulses_max, struct train_pulse **pulses,
-                                    bool **same_period, size_t *count, double hold_ms[2], struct message *why)
+enum status contraction_list_pulses(const struct contraction *list, size_t contractions,
+                                    const struct recruitment *recruitment, const struct train_grid *grid,
+                                    size_t pulses_max, struct train_pulse **pulses, bool **same_period,
+                                    size_t *count, double hold_ms[2], struct message *why)
 {
     struct layout layout = {.most = pulses_max};
     uint64_t next_us = 0;
@@ -145,10 +159,12 @@ enum status contraction_list_pulses(const struct contraction *list, size_t contr
     if (same_period) *same_period = NULL;
     for (size_t i = 0; i < contractions && status == STATUS_OK; i++) {
         const size_t first = layout.count;
-        status = grid ? add_compiled(&layout, &list[i], recruitment, grid, why) : add_exact(&layout, &list[i], recruitment, why);
+        status = grid ? add_compiled(&layout, &list[i], recruitment, grid, why)
+                      : add_exact(&layout, &list[i], recruitment, why);
         if (status == STATUS_OK) status = repeat_pulses(&layout, first, &list[i], next_us, &next_us, why);
     }
-    if (status == STATUS_OK && hold_ms && contractions > 0) status = first_hold(&list[0], recruitment, grid, hold_ms, why);
+    if (status == STATUS_OK && hold_ms && contractions > 0)
+        status = first_hold(&list[0], recruitment, grid, hold_ms, why);
     free(layout.segments);
     if (status != STATUS_OK) {
         free(layout.pulses);
@@ -157,7 +173,9 @@ enum status contraction_list_pulses(const struct contraction *list, size_t contr
     }
     *pulses = layout.pulses;
     *count = layout.count;
-    if (same_period) *same_period = layout.same_period;
-    else free(layout.same_period);
+    if (same_period)
+        *same_period = layout.same_period;
+    else
+        free(layout.same_period);
     return STATUS_OK;
 }

@@ -1,7 +1,7 @@
-/* The one expansion of a segment into pulses. The goal of this code: predict, recount, ledger, sign-off and the device see the
- * same pulses to the microsecond and the step, because they all run these lines.
- * Freestanding: no heap, no floating point, no libc. Products fit: settings are below 2^32, counts below 2^16, so from (n-1-k) + to k
- * stays below 2^48. Method: this project's (house chapter, "Trains"). */
+/* The one expansion of a segment into pulses. The goal of this code: predict, recount, ledger, sign-off and
+ * the device see the same pulses to the microsecond and the step, because they all run these lines.
+ * Freestanding: no heap, no floating point, no libc. Products fit: settings are below 2^32, counts below
+ * 2^16, so from (n-1-k) + to k stays below 2^48. Method: this project's (house chapter, "Trains"). */
 #include "core/train/segment.h"
 
 #include <stddef.h>
@@ -42,7 +42,8 @@ uint32_t segment_periods(const struct segment *segment)
     return 1 + (segment->count - first + each - 1) / each; /* a pair cut short at the end still is a period */
 }
 
-/* The period runs from the opening's last pulse; from pair to pair where the opening is just the first pair. */
+/* The period runs from the opening's last pulse; from pair to pair where the opening is just the first pair.
+ */
 uint64_t segment_period_start(const struct segment *segment, uint32_t k)
 {
     if (k == 0) return segment->start_us;
@@ -57,7 +58,8 @@ uint64_t segment_next_start(const struct segment *segment)
     return segment_period_start(segment, segment_periods(segment));
 }
 
-void segment_begin(struct segment_cursor *cursor, const struct segment *segment, const struct train_grid *grid)
+void segment_begin(struct segment_cursor *cursor, const struct segment *segment,
+                   const struct train_grid *grid)
 {
     cursor->segment = *segment;
     cursor->grid = *grid;
@@ -80,12 +82,12 @@ bool segment_next(struct segment_cursor *cursor, struct pulse *pulse)
     while (cursor->given < segment->count) {
         uint32_t period, place;
         locate(segment, cursor->given++, &period, &place);
-        const uint32_t duration =
-            segment_grid_value(segment_value(segment->duration_from_us, segment->duration_to_us, period, periods),
-                               grid->duration_from_us, grid->duration_step_us);
-        const uint32_t current =
-            segment_grid_value(segment_value(segment->current_from_ua, segment->current_to_ua, period, periods),
-                               grid->current_from_ua, grid->current_step_ua);
+        const uint32_t duration = segment_grid_value(
+            segment_value(segment->duration_from_us, segment->duration_to_us, period, periods),
+            grid->duration_from_us, grid->duration_step_us);
+        const uint32_t current = segment_grid_value(
+            segment_value(segment->current_from_ua, segment->current_to_ua, period, periods),
+            grid->current_from_ua, grid->current_step_ua);
         if (duration == 0 || current == 0) continue;
         pulse->at_us = segment_period_start(segment, period) + (uint64_t)place * segment->opening_gap_us;
         pulse->current_ua = current;

@@ -1,5 +1,6 @@
-/* The reference integration. The goal of this code: agree with the model chapter and with nothing else; slow is fine.
- * Integrator: SUNDIALS CVODE (Hindmarsh et al. 2005), Adams with fixed-point iteration, restarted at every pulse. */
+/* The reference integration. The goal of this code: agree with the model chapter and with nothing else; slow
+ * is fine. Integrator: SUNDIALS CVODE (Hindmarsh et al. 2005), Adams with fixed-point iteration, restarted at
+ * every pulse. */
 #include "support/cvode_muscle.h"
 
 #include <cvode/cvode.h>
@@ -65,10 +66,13 @@ static double fraction(const struct recruitment *law, const struct train_pulse *
 {
     double rho = 1;
     if (law->law == RECRUITMENT_STRENGTH_DURATION)
-        rho = 0.5 * erfc(-log(pulse->current_ma / (law->rheobase_ma * (1 + law->chronaxie_us / pulse->duration_us))) / law->spread /
-                         sqrt(2));
+        rho =
+            0.5 *
+            erfc(-log(pulse->current_ma / (law->rheobase_ma * (1 + law->chronaxie_us / pulse->duration_us))) /
+                 law->spread / sqrt(2));
     if (law->law == RECRUITMENT_DURATION_EXPONENTIAL)
-        rho = pulse->duration_us > law->pd0_us ? 1 - exp(-(pulse->duration_us - law->pd0_us) / law->pdt_us) : 0;
+        rho =
+            pulse->duration_us > law->pd0_us ? 1 - exp(-(pulse->duration_us - law->pd0_us) / law->pdt_us) : 0;
     return rho < 0.001 ? 0 : rho;
 }
 
@@ -92,17 +96,23 @@ static int slopes(realtype t, N_Vector vector, N_Vector slope, void *context)
         const realtype *y = N_VGetArrayPointer(vector) + k * EACH;
         realtype *dy = N_VGetArrayPointer(slope) + k * EACH;
         double C = y[AT_C];
-        if (r->closed_form) C = (tier->C0 + tier->S0 * (t - r->base_ms) / tier->tau_c) * exp(-(t - r->base_ms) / tier->tau_c);
-        const double sensitivity = y[AT_KM] * (1 + (p->has_potentiation ? p->potentiation_gain * (1 - y[AT_P]) : 0));
+        if (r->closed_form)
+            C = (tier->C0 + tier->S0 * (t - r->base_ms) / tier->tau_c) * exp(-(t - r->base_ms) / tier->tau_c);
+        const double sensitivity =
+            y[AT_KM] * (1 + (p->has_potentiation ? p->potentiation_gain * (1 - y[AT_P]) : 0));
         const double x = C / (sensitivity + C);
-        const double A = y[AT_A] * p->A_rest_n_per_ms, phi = y[AT_F] * p->A_rest_n_per_ms, F = phi * tier->share;
+        const double A = y[AT_A] * p->A_rest_n_per_ms, phi = y[AT_F] * p->A_rest_n_per_ms,
+                     F = phi * tier->share;
         dy[AT_S] = r->closed_form ? 0 : -y[AT_S] / tier->tau_c;
         dy[AT_C] = r->closed_form ? 0 : (y[AT_S] - y[AT_C]) / tier->tau_c;
-        dy[AT_F] = (tier->w * r->length * A * x - phi / (y[AT_TAU1] + p->tau2_ms * x)) / tier->theta / p->A_rest_n_per_ms;
+        dy[AT_F] = (tier->w * r->length * A * x - phi / (y[AT_TAU1] + p->tau2_ms * x)) / tier->theta /
+                   p->A_rest_n_per_ms;
         dy[AT_A] = tier->stopped_A ? 0 : raw_A(p, tier, A, F) / p->A_rest_n_per_ms;
         dy[AT_KM] = -(y[AT_KM] - p->Km_rest) / p->tau_fat_ms + tier->fatigue * p->alpha_Km_per_ms_n * phi;
         dy[AT_TAU1] = tier->stopped_tau1 ? 0 : raw_tau1(p, tier, y[AT_TAU1], F);
-        dy[AT_P] = p->has_potentiation ? x * (1 - y[AT_P]) / p->potentiation_rise_ms - y[AT_P] / p->potentiation_decay_ms : 0;
+        dy[AT_P] = p->has_potentiation
+                       ? x * (1 - y[AT_P]) / p->potentiation_rise_ms - y[AT_P] / p->potentiation_decay_ms
+                       : 0;
     }
     return 0;
 }
@@ -117,7 +127,8 @@ static int bounds(realtype t, N_Vector vector, realtype *root, void *context)
         const realtype *y = N_VGetArrayPointer(vector) + k * EACH;
         const double A = y[AT_A] * r->p->A_rest_n_per_ms, F = y[AT_F] * r->p->A_rest_n_per_ms * tier->share;
         root[2 * k] = tier->stopped_A ? raw_A(r->p, tier, A, F) : y[AT_A];
-        root[2 * k + 1] = tier->stopped_tau1 ? raw_tau1(r->p, tier, y[AT_TAU1], F) : 5 * r->p->tau1_rest_ms - y[AT_TAU1];
+        root[2 * k + 1] =
+            tier->stopped_tau1 ? raw_tau1(r->p, tier, y[AT_TAU1], F) : 5 * r->p->tau1_rest_ms - y[AT_TAU1];
     }
     return 0;
 }
@@ -134,7 +145,8 @@ static void pulse_on(struct reference *r, realtype *all, const struct train_puls
         before += tier->share;
         if (w <= 1e-12) continue; /* rounding of the shares' sum */
         const double R0 = isnan(p->R0) ? y[AT_KM] + p->R0_above_Km : p->R0;
-        const double R = tier->touched ? 1 + (R0 - 1) * exp(-(pulse->time_ms - tier->last_ms) / tier->tau_c) : 1;
+        const double R =
+            tier->touched ? 1 + (R0 - 1) * exp(-(pulse->time_ms - tier->last_ms) / tier->tau_c) : 1;
         tier->w = w;
         y[AT_S] += R;
         y[AT_A] *= fmax(0, 1 - p->beta_A_per_pulse * tier->fatigue * w);
@@ -193,7 +205,8 @@ static void keep_base(struct reference *r, const realtype *all)
     }
 }
 
-static void read_out(const struct reference *r, const realtype *all, double *force_n, double *capacity, double *potentiation)
+static void read_out(const struct reference *r, const realtype *all, double *force_n, double *capacity,
+                     double *potentiation)
 {
     *force_n = *capacity = 0;
     if (potentiation) *potentiation = 0;
@@ -204,12 +217,14 @@ static void read_out(const struct reference *r, const realtype *all, double *for
     }
 }
 
-void cvode_run(const struct muscle_parameters *p, const struct train_pulse *pulses, size_t count, const struct cvode_settings *settings,
-               const double *sample_ms, size_t samples, double *force_n, double *capacity, double *potentiation, long *steps)
+void cvode_run(const struct muscle_parameters *p, const struct train_pulse *pulses, size_t count,
+               const struct cvode_settings *settings, const double *sample_ms, size_t samples,
+               double *force_n, double *capacity, double *potentiation, long *steps)
 {
     struct reference r = {.p = p, .closed_form = settings->closed_form};
     make_pool(&r);
-    r.length = isnan(p->length_factor) ? exp(-(p->length_relative - 1) * (p->length_relative - 1) / 0.45) : p->length_factor;
+    r.length = isnan(p->length_factor) ? exp(-(p->length_relative - 1) * (p->length_relative - 1) / 0.45)
+                                       : p->length_factor;
     SUNContext sun;
     if (SUNContext_Create(NULL, &sun)) die("no context");
     N_Vector y = N_VNew_Serial(r.tiers * EACH, sun);
@@ -224,8 +239,9 @@ void cvode_run(const struct muscle_parameters *p, const struct train_pulse *puls
     void *cvode = CVodeCreate(CV_ADAMS, sun);
     SUNNonlinearSolver solver = SUNNonlinSol_FixedPoint(y, 0, sun);
     double now = 0;
-    if (CVodeInit(cvode, slopes, now, y) || CVodeSStolerances(cvode, settings->rtol, settings->atol) || CVodeSetUserData(cvode, &r) ||
-        CVodeSetNonlinearSolver(cvode, solver) || CVodeRootInit(cvode, 2 * r.tiers, bounds) || CVodeSetNoInactiveRootWarn(cvode) ||
+    if (CVodeInit(cvode, slopes, now, y) || CVodeSStolerances(cvode, settings->rtol, settings->atol) ||
+        CVodeSetUserData(cvode, &r) || CVodeSetNonlinearSolver(cvode, solver) ||
+        CVodeRootInit(cvode, 2 * r.tiers, bounds) || CVodeSetNoInactiveRootWarn(cvode) ||
         CVodeSetMaxNumSteps(cvode, 100000000))
         die("set-up failed");
     if (settings->order_max > 0) CVodeSetMaxOrd(cvode, settings->order_max);
@@ -243,11 +259,13 @@ void cvode_run(const struct muscle_parameters *p, const struct train_pulse *puls
             continue;
         }
         if (now >= sample_ms[sample]) {
-            read_out(&r, all, &force_n[sample], &capacity[sample], potentiation ? &potentiation[sample] : NULL);
+            read_out(&r, all, &force_n[sample], &capacity[sample],
+                     potentiation ? &potentiation[sample] : NULL);
             sample++;
             continue;
         }
-        const double to = pulse < count && pulses[pulse].time_ms < sample_ms[sample] ? pulses[pulse].time_ms : sample_ms[sample];
+        const double to = pulse < count && pulses[pulse].time_ms < sample_ms[sample] ? pulses[pulse].time_ms
+                                                                                     : sample_ms[sample];
         if (!any) { /* at rest nothing moves */
             now = to;
             restart = true;
@@ -283,7 +301,8 @@ struct published {
     size_t given; /* pulses so far */
 };
 
-/* dC/dt = (1/tau_c) sum_i R_i exp(-(t - t_i)/tau_c) - C/tau_c, R_1 = 1, R_i = 1 + (R0 - 1) exp(-(t_i - t_(i-1))/tau_c) */
+/* dC/dt = (1/tau_c) sum_i R_i exp(-(t - t_i)/tau_c) - C/tau_c, R_1 = 1, R_i = 1 + (R0 - 1) exp(-(t_i -
+ * t_(i-1))/tau_c) */
 static int published_slopes(realtype t, N_Vector vector, N_Vector slope, void *context)
 {
     const struct published *m = context;
@@ -292,7 +311,8 @@ static int published_slopes(realtype t, N_Vector vector, N_Vector slope, void *c
     realtype *dy = N_VGetArrayPointer(slope);
     double sum = 0;
     for (size_t i = 0; i < m->given; i++) {
-        const double R = i == 0 ? 1 : 1 + (p->R0 - 1) * exp(-(m->pulse_ms[i] - m->pulse_ms[i - 1]) / p->tau_c_ms);
+        const double R =
+            i == 0 ? 1 : 1 + (p->R0 - 1) * exp(-(m->pulse_ms[i] - m->pulse_ms[i - 1]) / p->tau_c_ms);
         sum += R * exp(-(t - m->pulse_ms[i]) / p->tau_c_ms);
     }
     const double C = y[0], F = y[1], A = y[2], Km = y[3], tau1 = y[4];
@@ -304,20 +324,22 @@ static int published_slopes(realtype t, N_Vector vector, N_Vector slope, void *c
     return 0;
 }
 
-void cvode_run_published(const struct muscle_parameters *p, const double *pulse_ms, size_t count, const double *sample_ms,
-                         size_t samples, double *force_n, double *A)
+void cvode_run_published(const struct muscle_parameters *p, const double *pulse_ms, size_t count,
+                         const double *sample_ms, size_t samples, double *force_n, double *A)
 {
     struct published m = {.p = p, .pulse_ms = pulse_ms};
     SUNContext sun;
     if (SUNContext_Create(NULL, &sun)) die("no context");
     N_Vector y = N_VNew_Serial(5, sun);
     realtype *state = N_VGetArrayPointer(y);
-    memcpy(state, (const double[]){0, 0, p->A_rest_n_per_ms, p->Km_rest, p->tau1_rest_ms}, 5 * sizeof(double));
+    memcpy(state, (const double[]){0, 0, p->A_rest_n_per_ms, p->Km_rest, p->tau1_rest_ms},
+           5 * sizeof(double));
     void *cvode = CVodeCreate(CV_ADAMS, sun);
     SUNNonlinearSolver solver = SUNNonlinSol_FixedPoint(y, 0, sun);
     double now = 0;
-    if (CVodeInit(cvode, published_slopes, 0, y) || CVodeSStolerances(cvode, 1e-10, 1e-13) || CVodeSetUserData(cvode, &m) ||
-        CVodeSetNonlinearSolver(cvode, solver) || CVodeSetMaxNumSteps(cvode, 100000000))
+    if (CVodeInit(cvode, published_slopes, 0, y) || CVodeSStolerances(cvode, 1e-10, 1e-13) ||
+        CVodeSetUserData(cvode, &m) || CVodeSetNonlinearSolver(cvode, solver) ||
+        CVodeSetMaxNumSteps(cvode, 100000000))
         die("set-up failed");
     bool restart = true;
     for (size_t sample = 0; sample < samples;) {
@@ -331,7 +353,8 @@ void cvode_run_published(const struct muscle_parameters *p, const double *pulse_
             A[sample++] = state[2];
             continue;
         }
-        const double to = m.given < count && pulse_ms[m.given] < sample_ms[sample] ? pulse_ms[m.given] : sample_ms[sample];
+        const double to =
+            m.given < count && pulse_ms[m.given] < sample_ms[sample] ? pulse_ms[m.given] : sample_ms[sample];
         if (restart && CVodeReInit(cvode, now, y)) die("restart failed");
         restart = false;
         CVodeSetStopTime(cvode, m.given < count ? pulse_ms[m.given] : sample_ms[samples - 1] + 1);

@@ -71,16 +71,17 @@ size_t draw_pulses(uint64_t *state, double tau1_ms, struct train_pulse pulses[DR
 {
     const size_t count = 8 + draw_next(state) % (DRAW_PULSES_MAX - 8);
     double now = draw_next(state) % 2 ? draw_uniform(state, 0, 50) : 0;
-    const double typical = draw_log(state, 8, 200), duration = draw_uniform(state, 150, 500), current = draw_uniform(state, 25, 80);
+    const double typical = draw_log(state, 8, 200), duration = draw_uniform(state, 150, 500),
+                 current = draw_uniform(state, 25, 80);
     for (size_t i = 0; i < count; i++) {
         const uint64_t kind = draw_next(state) % 16;
         pulses[i] = (struct train_pulse){.time_ms = now, .duration_us = duration, .current_ma = current};
         if (kind < 6) pulses[i].duration_us = draw_uniform(state, 50, 600);
-        now += kind == 7    ? draw_log(state, 2, 8)
-               : kind == 8  ? draw_log(state, 300, tau1_ms < 10 ? 1000 : 5000)
-               : kind == 9  ? draw_log(state, 2, 300)
+        now += kind == 7                                  ? draw_log(state, 2, 8)
+               : kind == 8                                ? draw_log(state, 300, tau1_ms < 10 ? 1000 : 5000)
+               : kind == 9                                ? draw_log(state, 2, 300)
                : kind == 10 && i % 8 == 0 && tau1_ms > 25 ? draw_log(state, 5000, 60000)
-                            : typical;
+                                                          : typical;
     }
     return count;
 }

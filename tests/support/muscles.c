@@ -1,4 +1,5 @@
-/* Muscles that tests share. The goal of this code: one place for the published numbers, each with where it is from. */
+/* Muscles that tests share. The goal of this code: one place for the published numbers, each with where it is
+ * from. */
 #include "support/muscles.h"
 
 #include <math.h>
@@ -6,7 +7,8 @@
 struct muscle_parameters muscle_untiring(void)
 {
     const double absent = (double)NAN;
-    /* Ding 2003: A 3.009 (memory), Km 0.103, tau1 50.957 (second-hand), tau_c 20, R0 = Km + 1.04 (read, Kesar 2008), tau2 60 (memory) */
+    /* Ding 2003: A 3.009 (memory), Km 0.103, tau1 50.957 (second-hand), tau_c 20, R0 = Km + 1.04 (read, Kesar
+     * 2008), tau2 60 (memory) */
     return (struct muscle_parameters){.A_rest_n_per_ms = 3.009,
                                       .Km_rest = 0.103,
                                       .R0 = 1.143,
@@ -42,8 +44,8 @@ struct muscle_parameters muscle_composed(void)
 {
     struct muscle_parameters p = muscle_published();
     p.beta_A_per_pulse = 4e-4;
-    p.recruitment =
-        (struct recruitment){.law = RECRUITMENT_STRENGTH_DURATION, .rheobase_ma = 22, .chronaxie_us = 180, .spread = 0.25};
+    p.recruitment = (struct recruitment){
+        .law = RECRUITMENT_STRENGTH_DURATION, .rheobase_ma = 22, .chronaxie_us = 180, .spread = 0.25};
     p.has_potentiation = true;
     p.potentiation_gain = 2.5;
     p.potentiation_rise_ms = 800;

@@ -21,8 +21,10 @@ static void length_is_best_from_80_to_120_percent(void **state)
 {
     (void)state;
     for (double l = 0.8; l <= 1.2001; l += 0.01) assert_true(muscle_length_factor(l) > 0.9);
-    for (double l = 1.2; l < 1.8; l += 0.01) assert_true(muscle_length_factor(l + 0.01) < muscle_length_factor(l));
-    for (double l = 0.8; l > 0.3; l -= 0.01) assert_true(muscle_length_factor(l - 0.01) < muscle_length_factor(l));
+    for (double l = 1.2; l < 1.8; l += 0.01)
+        assert_true(muscle_length_factor(l + 0.01) < muscle_length_factor(l));
+    for (double l = 0.8; l > 0.3; l -= 0.01)
+        assert_true(muscle_length_factor(l - 0.01) < muscle_length_factor(l));
     assert_true(muscle_length_factor(0.75) < 0.9 && muscle_length_factor(1.25) < 0.9);
 }
 
@@ -36,11 +38,13 @@ static void velocity_factor_is_thelens(void **state)
     assert_near(muscle_velocity_factor(-1.5), 0, 0, 0);
 }
 
-/* I = b (1 + c/d): twice rheobase at d = chronaxie (Geddes 2004, read); there half of the pool is recruited */
+/* I = b (1 + c/d): twice rheobase at d = chronaxie (Geddes 2004, read); there half of the pool is recruited
+ */
 static void half_is_recruited_on_the_strength_duration_curve(void **state)
 {
     (void)state;
-    const struct recruitment law = {.law = RECRUITMENT_STRENGTH_DURATION, .rheobase_ma = 22, .chronaxie_us = 180, .spread = 0.25};
+    const struct recruitment law = {
+        .law = RECRUITMENT_STRENGTH_DURATION, .rheobase_ma = 22, .chronaxie_us = 180, .spread = 0.25};
     assert_near(recruitment_of(&law, 180, 44), 0.5, 1e-15, 0);
     assert_near(recruitment_of(&law, 360, 33), 0.5, 1e-15, 0);
     /* one spread above in the logarithm: Phi(1) = 0.841344746068543 (Abramowitz and Stegun 26.2, memory) */
@@ -52,7 +56,8 @@ static void half_is_recruited_on_the_strength_duration_curve(void **state)
 static void duration_exponential_follows_its_law(void **state)
 {
     (void)state;
-    const struct recruitment law = {.law = RECRUITMENT_DURATION_EXPONENTIAL, .pd0_us = 130, .pdt_us = 190, .current_ma = 60};
+    const struct recruitment law = {
+        .law = RECRUITMENT_DURATION_EXPONENTIAL, .pd0_us = 130, .pdt_us = 190, .current_ma = 60};
     assert_near(recruitment_of(&law, 130, 60), 0, 0, 0);
     assert_near(recruitment_of(&law, 320, 60), 1 - exp(-1), 1e-15, 0);
     struct message why;
@@ -69,7 +74,8 @@ static void laws_and_their_inverses_come_back(void **state)
         {.law = RECRUITMENT_DURATION_EXPONENTIAL, .pd0_us = 130, .pdt_us = 190, .current_ma = 60}};
     for (int i = 0; i < 2; i++)
         for (double rho = 0.0011; rho < 0.97; rho += 0.00731)
-            assert_near(recruitment_of(&laws[i], recruitment_duration_us(&laws[i], rho, 60), 60), rho, 0, 1e-11);
+            assert_near(recruitment_of(&laws[i], recruitment_duration_us(&laws[i], rho, 60), 60), rho, 0,
+                        1e-11);
     for (double rho = 0.0011; rho < 0.999; rho += 0.00731)
         assert_near(recruitment_of(&laws[0], 300, recruitment_current_ma(&laws[0], rho, 300)), rho, 0, 1e-11);
     for (double p = 1e-12; p < 0.5; p *= 1.7) {
@@ -89,7 +95,8 @@ static struct muscle made(const struct muscle_parameters *p)
     return muscle;
 }
 
-/* share proportional to 50^q, theta to 3^-(q-1/2), f to 10^(q-1/2), the latter two with share-weighted mean 1 (model chapter, "Pool") */
+/* share proportional to 50^q, theta to 3^-(q-1/2), f to 10^(q-1/2), the latter two with share-weighted mean 1
+ * (model chapter, "Pool") */
 static void a_pool_keeps_the_whole_muscles_numbers(void **state)
 {
     (void)state;
@@ -153,7 +160,8 @@ static void summation_has_the_published_gains(void **state)
         struct muscle_state s;
         muscle_rest(&m, &s);
         muscle_pulse(&m, &s, 1, 0);
-        muscle_pulse(&m, &s, 1, gap[i]); /* S itself is not carried on here: only what the pulse adds is looked at */
+        muscle_pulse(&m, &s, 1,
+                     gap[i]); /* S itself is not carried on here: only what the pulse adds is looked at */
         assert_near(s.S[0] - 1, R[i], 5e-9, 0);
     }
 }
@@ -206,7 +214,8 @@ static void remaining_force_is_one_at_rest_and_means_fatigue_alone(void **state)
     s.Km[0] = 0.2;
     s.tau1[0] = 80;
     const double C = (1 + 0.143 * exp(-2.5)) * 0.4, x = C / (0.2 + C), x0 = C / (0.103 + C);
-    assert_near(muscle_force_remaining(&one, &s, 20), x * (80 + 60 * x) / (x0 * (50.957 + 60 * x0)), 1e-13, 0);
+    assert_near(muscle_force_remaining(&one, &s, 20), x * (80 + 60 * x) / (x0 * (50.957 + 60 * x0)), 1e-13,
+                0);
 }
 
 static void slopes_move_parameters_with_length(void **state)

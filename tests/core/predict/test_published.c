@@ -1,4 +1,5 @@
-/* Values computed from the published equations by an independent program (published.md, "computed": numerics, not evidence). */
+/* Values computed from the published equations by an independent program (published.md, "computed": numerics,
+ * not evidence). */
 #include "core/predict/predict.h"
 #include "support/muscles.h"
 #include "support/near.h"
@@ -6,14 +7,18 @@
 #include <math.h>
 #include <stdlib.h>
 
-static struct trace_summary summary_of(const struct muscle_parameters *p, double pps, double length_ms, bool exact)
+static struct trace_summary summary_of(const struct muscle_parameters *p, double pps, double length_ms,
+                                       bool exact)
 {
     struct train_pulse pulses[256];
     size_t count = 0;
     for (double t = 0; t < length_ms - 1e-9 && count < 256; t += 1000 / pps)
         pulses[count++] = (struct train_pulse){.time_ms = t, .duration_us = 600, .current_ma = 60};
-    const struct trace_options options = {.exact = exact, .step_ms = 1, .until_ms = (double)NAN,
-                                          .window_from_ms = (double)NAN, .window_to_ms = (double)NAN};
+    const struct trace_options options = {.exact = exact,
+                                          .step_ms = 1,
+                                          .until_ms = (double)NAN,
+                                          .window_from_ms = (double)NAN,
+                                          .window_to_ms = (double)NAN};
     struct trace trace;
     struct trace_summary summary;
     struct message why;
@@ -22,7 +27,8 @@ static struct trace_summary summary_of(const struct muscle_parameters *p, double
     return summary;
 }
 
-/* computed, able-bodied values, tau2 60, fatigue off: twitch 99.475 N at 78.37 ms, half-relaxation +70.61 ms */
+/* computed, able-bodied values, tau2 60, fatigue off: twitch 99.475 N at 78.37 ms, half-relaxation +70.61 ms
+ */
 static void one_pulse_gives_the_twitch(void **state)
 {
     (void)state;
@@ -66,7 +72,8 @@ static void force_at_half_a_second(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {cmocka_unit_test(one_pulse_gives_the_twitch), cmocka_unit_test(trains_reach_the_published_peaks),
+    const struct CMUnitTest tests[] = {cmocka_unit_test(one_pulse_gives_the_twitch),
+                                       cmocka_unit_test(trains_reach_the_published_peaks),
                                        cmocka_unit_test(force_at_half_a_second)};
     return cmocka_run_group_tests(tests, NULL, NULL) != 0;
 }

@@ -1,4 +1,5 @@
-/* Contractions: exact pulses, compiled segments, and that the two agree. Rules: house chapter, "Trains" and "Train"; numbers by hand. */
+/* Contractions: exact pulses, compiled segments, and that the two agree. Rules: house chapter, "Trains" and
+ * "Train"; numbers by hand. */
 #include "core/muscle/recruitment.h"
 #include "core/train/contraction.h"
 #include "support/near.h"
@@ -28,7 +29,8 @@ static struct contraction steady(double pps, double hold_ms)
                                 .repeat = 1};
 }
 
-static size_t exact(const struct contraction *contraction, const struct recruitment *law, struct train_pulse *pulses)
+static size_t exact(const struct contraction *contraction, const struct recruitment *law,
+                    struct train_pulse *pulses)
 {
     struct message why;
     size_t count;
@@ -57,7 +59,8 @@ static void a_hold_has_no_pulse_at_its_end(void **state)
     assert_int_equal(exact(&longer, &full_law, pulses), 21);
 }
 
-/* t < ramp_up is the ramp's: at 20 pps and 400 ms pulses 0 .. 350 ms, eight of them; the ninth at 400 is the hold's. */
+/* t < ramp_up is the ramp's: at 20 pps and 400 ms pulses 0 .. 350 ms, eight of them; the ninth at 400 is the
+ * hold's. */
 static void ramp_pulses_follow_their_shape_in_recruitment(void **state)
 {
     (void)state;
@@ -118,7 +121,9 @@ static void free_gaps_are_one_pulse_more_than_gaps(void **state)
     struct message why;
     struct train_pulse *list;
     size_t count;
-    assert_status(contraction_list_pulses(&c, 1, &full_law, &bench_grid, MOST, &list, NULL, &count, NULL, &why), STATUS_OK, &why);
+    assert_status(
+        contraction_list_pulses(&c, 1, &full_law, &bench_grid, MOST, &list, NULL, &count, NULL, &why),
+        STATUS_OK, &why);
     assert_int_equal(count, 5);
     for (int i = 0; i < 5; i++) assert_near(list[i].time_ms, at_ms[i], 1e-9, 0);
     free(list);
@@ -130,15 +135,16 @@ static void another_current_than_the_laws_is_refused_by_both_names(void **state)
     struct message why;
     struct train_pulse pulses[8];
     size_t count;
-    const struct recruitment law = {.law = RECRUITMENT_DURATION_EXPONENTIAL, .pd0_us = 130, .pdt_us = 190, .current_ma = 55};
+    const struct recruitment law = {
+        .law = RECRUITMENT_DURATION_EXPONENTIAL, .pd0_us = 130, .pdt_us = 190, .current_ma = 55};
     const struct contraction c = steady(30, 100);
     assert_status(contraction_pulses(&c, &law, pulses, 8, &count, &why), STATUS_REFUSED, &why);
     assert_non_null(strstr(why.text, "60 mA"));
     assert_non_null(strstr(why.text, "55 mA"));
 }
 
-/* Compiled pulses stand where the exact ones stand, each within half a step and half a microsecond of its ideal where eight pieces
- * allow it, and settings never turn along a ramp. */
+/* Compiled pulses stand where the exact ones stand, each within half a step and half a microsecond of its
+ * ideal where eight pieces allow it, and settings never turn along a ramp. */
 static void a_compiled_ramp_is_within_half_a_step(void **state)
 {
     (void)state;
@@ -151,8 +157,9 @@ static void a_compiled_ramp_is_within_half_a_step(void **state)
         c.ramp_down = (struct ramp){.shape = shapes[i], .ms = 300};
         const size_t exact_count = exact(&c, &spread_law, ideal);
         size_t count;
-        assert_status(contraction_list_pulses(&c, 1, &spread_law, &bench_grid, MOST, &given, NULL, &count, NULL, &why), STATUS_OK,
-                      &why);
+        assert_status(
+            contraction_list_pulses(&c, 1, &spread_law, &bench_grid, MOST, &given, NULL, &count, NULL, &why),
+            STATUS_OK, &why);
         assert_int_equal(count, exact_count);
         for (size_t k = 0; k < count; k++) {
             assert_near(given[k].time_ms, ideal[k].time_ms, 1e-9, 0);
@@ -170,7 +177,8 @@ static void on_tiny_steps_compiled_and_exact_agree(void **state)
     (void)state;
     struct train_pulse ideal[MOST], *given;
     struct message why;
-    const struct train_grid fine = {.current_from_ua = 1, .current_step_ua = 1, .duration_from_us = 1, .duration_step_us = 1};
+    const struct train_grid fine = {
+        .current_from_ua = 1, .current_step_ua = 1, .duration_from_us = 1, .duration_step_us = 1};
     struct contraction c = steady(40, 700);
     c.opening = 3;
     c.ramp_up = (struct ramp){.shape = RAMP_LINEAR, .ms = 200};
@@ -179,7 +187,9 @@ static void on_tiny_steps_compiled_and_exact_agree(void **state)
     size_t count;
     bool *same;
     double hold_ms[2];
-    assert_status(contraction_list_pulses(&c, 1, &spread_law, &fine, MOST, &given, &same, &count, hold_ms, &why), STATUS_OK, &why);
+    assert_status(
+        contraction_list_pulses(&c, 1, &spread_law, &fine, MOST, &given, &same, &count, hold_ms, &why),
+        STATUS_OK, &why);
     assert_int_equal(count, exact_count);
     for (size_t k = 0; k < count; k++) {
         assert_near(given[k].time_ms, ideal[k].time_ms, 1e-9, 0);
@@ -193,12 +203,14 @@ static void on_tiny_steps_compiled_and_exact_agree(void **state)
     free(same);
 }
 
-/* A long ramp can not be followed to half a step in eight pieces: the pieces are at most eight and the error is said by the pulses. */
+/* A long ramp can not be followed to half a step in eight pieces: the pieces are at most eight and the error
+ * is said by the pulses. */
 static void a_long_ramp_takes_at_most_eight_pieces(void **state)
 {
     (void)state;
     struct message why;
-    const struct train_grid fine = {.current_from_ua = 1, .current_step_ua = 1, .duration_from_us = 1, .duration_step_us = 1};
+    const struct train_grid fine = {
+        .current_from_ua = 1, .current_step_ua = 1, .duration_from_us = 1, .duration_step_us = 1};
     struct contraction c = steady(80, 1000);
     c.ramp_up = (struct ramp){.shape = RAMP_RAISED_COSINE, .ms = 3500};
     assert_status(contraction_compile_ramps(&c, &spread_law, &fine, &why), STATUS_OK, &why);
@@ -209,19 +221,22 @@ static void a_long_ramp_takes_at_most_eight_pieces(void **state)
     struct train_pulse ideal[MOST], *given;
     size_t count;
     const size_t exact_count = exact(&c, &spread_law, ideal);
-    assert_status(contraction_list_pulses(&c, 1, &spread_law, &fine, MOST, &given, NULL, &count, NULL, &why), STATUS_OK, &why);
+    assert_status(contraction_list_pulses(&c, 1, &spread_law, &fine, MOST, &given, NULL, &count, NULL, &why),
+                  STATUS_OK, &why);
     assert_int_equal(count, exact_count);
     for (size_t k = 0; k < count; k++) assert_near(given[k].duration_us, ideal[k].duration_us, 5, 0);
     free(given);
 }
 
-/* Pulses of a ramp below the stimulator's `from` are not given; the contraction starts at the first that is, and its hold comes earlier. */
+/* Pulses of a ramp below the stimulator's `from` are not given; the contraction starts at the first that is,
+ * and its hold comes earlier. */
 static void a_weak_beginning_is_not_given_and_the_contraction_starts_later(void **state)
 {
     (void)state;
     struct train_pulse ideal[MOST], *given;
     struct message why;
-    const struct train_grid coarse = {.current_from_ua = 500, .current_step_ua = 500, .duration_from_us = 200, .duration_step_us = 5};
+    const struct train_grid coarse = {
+        .current_from_ua = 500, .current_step_ua = 500, .duration_from_us = 200, .duration_step_us = 5};
     struct contraction c = steady(25, 400);
     c.opening = 2;
     c.ramp_up = (struct ramp){.shape = RAMP_LINEAR, .ms = 400};
@@ -232,7 +247,9 @@ static void a_weak_beginning_is_not_given_and_the_contraction_starts_later(void 
     while (ideal[end - 1].duration_us < 200) end--;
     assert_true(first > 2 && end < exact_count);
     double hold_ms[2];
-    assert_status(contraction_list_pulses(&c, 1, &spread_law, &coarse, MOST, &given, NULL, &count, hold_ms, &why), STATUS_OK, &why);
+    assert_status(
+        contraction_list_pulses(&c, 1, &spread_law, &coarse, MOST, &given, NULL, &count, hold_ms, &why),
+        STATUS_OK, &why);
     assert_int_equal(count, end - first);
     for (size_t k = 0; k < count; k++) {
         assert_near(given[k].time_ms, ideal[first + k].time_ms - ideal[first].time_ms, 1e-9, 0);
@@ -252,13 +269,15 @@ static void contractions_repeat_after_their_rest(void **state)
     struct contraction c[2] = {steady(20, 200), steady(50, 60)};
     c[0].repeat = 3;
     c[0].rest_ms = 800;
-    assert_status(contraction_list_pulses(c, 2, &full_law, NULL, MOST, &list, NULL, &count, NULL, &why), STATUS_OK, &why);
+    assert_status(contraction_list_pulses(c, 2, &full_law, NULL, MOST, &list, NULL, &count, NULL, &why),
+                  STATUS_OK, &why);
     assert_int_equal(count, 3 * 4 + 3);
     assert_near(list[4].time_ms, 150 + 800, 1e-9, 0);
     assert_near(list[12].time_ms, 3 * 950, 1e-9, 0);
     assert_near(list[14].time_ms, 3 * 950 + 40, 1e-9, 0);
     free(list);
-    assert_status(contraction_list_pulses(c, 2, &full_law, NULL, 14, &list, NULL, &count, NULL, &why), STATUS_REFUSED, &why);
+    assert_status(contraction_list_pulses(c, 2, &full_law, NULL, 14, &list, NULL, &count, NULL, &why),
+                  STATUS_REFUSED, &why);
 }
 
 int main(void)

@@ -1,4 +1,5 @@
-/* The one expansion: values, periods, openings, pairs, grid. Expected numbers by hand from the house chapter's "Trains". */
+/* The one expansion: values, periods, openings, pairs, grid. Expected numbers by hand from the house
+ * chapter's "Trains". */
 #include "core/train/segment.h"
 #include "support/near.h"
 
@@ -42,21 +43,37 @@ static void check_times(const struct segment *segment, const uint64_t *at_us, co
 static void after_an_opening_the_period_starts_at_its_last_pulse(void **state)
 {
     (void)state;
-    const struct segment triplet = {.start_us = 1000, .period_us = 33334, .current_from_ua = 1, .current_to_ua = 1, .count = 5,
-                                    .opening_gap_us = 5000, .duration_from_us = 1, .duration_to_us = 1, .opening = 3};
-    check_times(&triplet, (const uint64_t[]){1000, 6000, 11000, 44334, 77668}, (const bool[]){false, true, true, false, false}, 5);
+    const struct segment triplet = {.start_us = 1000,
+                                    .period_us = 33334,
+                                    .current_from_ua = 1,
+                                    .current_to_ua = 1,
+                                    .count = 5,
+                                    .opening_gap_us = 5000,
+                                    .duration_from_us = 1,
+                                    .duration_to_us = 1,
+                                    .opening = 3};
+    check_times(&triplet, (const uint64_t[]){1000, 6000, 11000, 44334, 77668},
+                (const bool[]){false, true, true, false, false}, 5);
     assert_int_equal(segment_periods(&triplet), 3);
     assert_int_equal(segment_next_start(&triplet), 111002);
     struct segment doublet = triplet;
     doublet.opening = 2;
-    check_times(&doublet, (const uint64_t[]){1000, 6000, 39334, 72668, 106002}, (const bool[]){false, true, false, false, false}, 5);
+    check_times(&doublet, (const uint64_t[]){1000, 6000, 39334, 72668, 106002},
+                (const bool[]){false, true, false, false, false}, 5);
 }
 
 static void pairs_run_from_pair_to_pair(void **state)
 {
     (void)state;
-    struct segment pairs = {.period_us = 80000, .current_from_ua = 1, .current_to_ua = 1, .count = 6, .opening_gap_us = 5000,
-                            .duration_from_us = 1, .duration_to_us = 1, .opening = 1, .pattern = SEGMENT_PAIRS};
+    struct segment pairs = {.period_us = 80000,
+                            .current_from_ua = 1,
+                            .current_to_ua = 1,
+                            .count = 6,
+                            .opening_gap_us = 5000,
+                            .duration_from_us = 1,
+                            .duration_to_us = 1,
+                            .opening = 1,
+                            .pattern = SEGMENT_PAIRS};
     check_times(&pairs, (const uint64_t[]){0, 5000, 80000, 85000, 160000, 165000}, (const bool[6]){false}, 6);
     pairs.opening = 2; /* the first pair is the doublet */
     check_times(&pairs, (const uint64_t[]){0, 5000, 80000, 85000, 160000, 165000},
@@ -72,8 +89,14 @@ static void pairs_run_from_pair_to_pair(void **state)
 static void an_opening_and_a_pair_have_one_value(void **state)
 {
     (void)state;
-    const struct segment ramp = {.period_us = 50000, .current_from_ua = 10000, .current_to_ua = 10000, .count = 5, .opening_gap_us = 5000,
-                                 .duration_from_us = 100, .duration_to_us = 200, .opening = 2};
+    const struct segment ramp = {.period_us = 50000,
+                                 .current_from_ua = 10000,
+                                 .current_to_ua = 10000,
+                                 .count = 5,
+                                 .opening_gap_us = 5000,
+                                 .duration_from_us = 100,
+                                 .duration_to_us = 200,
+                                 .opening = 2};
     const uint32_t expected[] = {100, 100, 133, 166, 200};
     struct segment_cursor cursor;
     struct pulse pulse;
@@ -87,9 +110,15 @@ static void an_opening_and_a_pair_have_one_value(void **state)
 static void pulses_below_from_are_skipped_and_keep_the_grid(void **state)
 {
     (void)state;
-    const struct train_grid grid = {.current_from_ua = 500, .current_step_ua = 500, .duration_from_us = 120, .duration_step_us = 10};
-    const struct segment ramp = {.period_us = 50000, .current_from_ua = 10300, .current_to_ua = 10300, .count = 4,
-                                 .duration_from_us = 100, .duration_to_us = 160, .opening = 1};
+    const struct train_grid grid = {
+        .current_from_ua = 500, .current_step_ua = 500, .duration_from_us = 120, .duration_step_us = 10};
+    const struct segment ramp = {.period_us = 50000,
+                                 .current_from_ua = 10300,
+                                 .current_to_ua = 10300,
+                                 .count = 4,
+                                 .duration_from_us = 100,
+                                 .duration_to_us = 160,
+                                 .opening = 1};
     struct segment_cursor cursor;
     struct pulse pulse;
     segment_begin(&cursor, &ramp, &grid);
@@ -108,8 +137,15 @@ static void pulses_below_from_are_skipped_and_keep_the_grid(void **state)
 static void a_segment_goes_on_where_the_one_before_ends(void **state)
 {
     (void)state;
-    const struct segment whole = {.start_us = 77, .period_us = 25000, .current_from_ua = 1, .current_to_ua = 1, .count = 21,
-                                  .opening_gap_us = 4000, .duration_from_us = 1, .duration_to_us = 1, .opening = 2};
+    const struct segment whole = {.start_us = 77,
+                                  .period_us = 25000,
+                                  .current_from_ua = 1,
+                                  .current_to_ua = 1,
+                                  .count = 21,
+                                  .opening_gap_us = 4000,
+                                  .duration_from_us = 1,
+                                  .duration_to_us = 1,
+                                  .opening = 2};
     struct segment first = whole, second = whole;
     first.count = 9;
     second.count = 12;
