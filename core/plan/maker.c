@@ -37,11 +37,6 @@ static enum status greatest_force(struct maker *maker, double *force_n, struct m
     if (list.count == 0)
         return status_fail(why, STATUS_REFUSED, "no frequency is left: %s", plan_why_text(list.end.reason));
     struct attempt_bench *bench = &maker->work.bench;
-    struct muscle_parameters fresh = maker->muscle->parameters;
-    fresh.has_potentiation = false;
-    fresh.alpha_A_per_ms2 = fresh.alpha_Km_per_ms_n = fresh.alpha_tau1_per_n = fresh.beta_A_per_pulse = 0.0;
-    struct predictor *rested = predictor_new(&fresh, false, NULL, why);
-    if (!rested) return STATUS_REFUSED;
     const double fastest = list.from + (double)(list.count - 1) * list.step;
     bench->space = maker->problem.space;
     settings_rate(&bench->space, fastest * (pairs ? 2.0 : 1.0));
@@ -51,11 +46,10 @@ static enum status greatest_force(struct maker *maker, double *force_n, struct m
                                                     .opening_gap_ms = 5.0,
                                                     .ramp_up = {.ms = 1000.0},
                                                     .hold_ms = 1000.0},
-                                          .before = rested};
+                                          .before = maker->awake};
     const struct solve_settings strongest = solve_strongest(bench);
     struct solve_result result;
     const enum status status = solve_at(bench, &request, &strongest, &result, why);
-    predictor_free(rested);
     *force_n = result.attempt.hold.mean_n;
     return status;
 }
@@ -100,7 +94,12 @@ static enum status open_work(struct maker *maker, struct message *why)
     if (status != STATUS_OK) return status;
     maker->work.now = predictor_new(&maker->muscle->parameters, false, NULL, why);
     maker->rested = predictor_new(&maker->muscle->parameters, false, NULL, why);
-    if (!maker->work.now || !maker->rested) return STATUS_REFUSED;
+    struct muscle_parameters untiring = maker->muscle->parameters;
+    untiring.has_potentiation = false;
+    untiring.alpha_A_per_ms2 = untiring.alpha_Km_per_ms_n = untiring.alpha_tau1_per_n =
+        untiring.beta_A_per_pulse = 0.0;
+    maker->awake = predictor_new(&untiring, false, NULL, why);
+    if (!maker->work.now || !maker->rested || !maker->awake) return STATUS_REFUSED;
     maker->work.bench.limits = maker->channel->limits;
     maker->work.bench.channel = (uint8_t)maker->channel->channel;
     return STATUS_OK;
@@ -126,6 +125,7 @@ enum status maker_open(struct maker *maker, const struct demand *demand, const s
     problem->aim = contraction_aim_of(demand, target_n, channel->force_cap_n);
     problem->solve_target_n = target_n;
     problem->rested = maker->rested;
+    problem->awake = maker->awake;
     problem->start_us = plan_us_up(demand->start_ms);
     problem->warm_up =
         muscle->parameters.has_potentiation ? demand->warm_up : 0; /* only a dormant muscle needs them */
@@ -140,8 +140,9 @@ void maker_close(struct maker *maker)
     attempt_bench_close(&maker->work.bench);
     predictor_free(maker->work.now);
     predictor_free(maker->rested);
+    predictor_free(maker->awake);
     free(maker->contraction);
-    maker->work.now = maker->rested = NULL;
+    maker->work.now = maker->rested = maker->awake = NULL;
     maker->contraction = NULL;
 }
 

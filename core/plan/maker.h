@@ -12,7 +12,7 @@ struct maker {
     struct session_work work;
     struct session_problem problem;
     struct settings_space whole; /* before a current was chosen once */
-    struct predictor *rested;
+    struct predictor *rested, *awake;
     struct session_contraction *contraction; /* problem.contractions of them */
     struct search_result found;
 };

@@ -262,13 +262,17 @@ static struct plan_why why_it_ends(struct counter *counter, unsigned asked)
     return plan_why_make(WHY_SESSION, (double)counter->number, (double)asked, "contractions");
 }
 
-/* Which limit binds where a contraction missed. */
+/* Which limit binds where a contraction missed. Where settings stand at their end, it is what ends them: a
+ * level hold would have needed more. */
 static struct plan_why binding_of(const struct counter *counter, const struct profile_muscle *muscle)
 {
     const struct plan_channel *channel = counter->channel;
     const struct contraction *at = &counter->miss_settings;
-    if (counter->miss.reason != WHY_RECRUITMENT_SPENT || !counter->asked) return counter->miss;
-    if (counter->cap_edge_n > 0.97 * channel->force_cap_n)
+    const enum plan_why_reason miss = counter->miss.reason;
+    if ((miss != WHY_RECRUITMENT_SPENT && miss != WHY_DROOP && miss != WHY_RISE) || !counter->asked)
+        return counter->miss;
+    const bool low = miss == WHY_RECRUITMENT_SPENT;
+    if (low && counter->cap_edge_n > 0.97 * channel->force_cap_n)
         return plan_why_make(WHY_FORCE_CAP, counter->cap_edge_n, channel->force_cap_n, "N");
     struct settings_space space;
     struct message ignored;
@@ -276,14 +280,19 @@ static struct plan_why binding_of(const struct counter *counter, const struct pr
                             &ignored) != STATUS_OK)
         return counter->miss;
     if (space.recruitment.law == RECRUITMENT_FULL)
-        return search_frequencies(&channel->demand, &counter->plan->stimulator, &channel->limits, at->pairs,
-                                  at->opening)
-            .end;
+        return low ? search_frequencies(&channel->demand, &counter->plan->stimulator, &channel->limits,
+                                        at->pairs, at->opening)
+                         .end
+                   : counter->miss;
     settings_rate(&space, at->frequency_pps * (at->pairs ? 2.0 : 1.0) +
                               (at->opening > 1 ? (double)at->opening - 1.0 : 0.0));
     const double duration = fmax(at->duration_us, isnan(at->trim_duration_us) ? 0.0 : at->trim_duration_us);
-    const double current = fmax(at->current_ma, isnan(at->trim_current_ma) ? 0.0 : at->trim_current_ma);
-    return settings_binding(&space, (uint32_t)lround(duration), (uint32_t)lround(current * 1000.0));
+    const double current =
+        1000.0 * fmax(at->current_ma, isnan(at->trim_current_ma) ? 0.0 : at->trim_current_ma);
+    const double most = settings_share(&space, (double)settings_duration_to(&space, space.strongest_ua, NULL),
+                                       (double)space.strongest_ua);
+    if (!low && settings_share(&space, duration, current) < most - 1e-3) return counter->miss;
+    return settings_binding(&space, (uint32_t)lround(duration), (uint32_t)lround(current));
 }
 
 /* A channel's outcome into the plan's: sums over channels, the earliest first miss in channel order. */

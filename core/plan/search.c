@@ -1,16 +1,18 @@
 /* The scan over policies. The goal of this code: start slow, raise recruitment, raise frequency when
  * recruitment is spent (design, Plan) is one family of policies among which the start, the step, the opening
- * and the pattern are found by running them. Order: for each pattern and opening a coarse scan of the first
- * frequency (steps of a fifth), then its neighbours by halving, then larger steps of frequency. A policy that
- * misses early ends early, so the scan costs little where it is hopeless. */
+ * and the pattern are found by running them. Order: the first pattern and opening from slow to fast in
+ * fifths, rates at which force can not fuse left out; then its neighbours by halving; the other patterns and
+ * openings about what did best; then larger steps of frequency, and every ramp. A policy that misses early
+ * ends early, so the scan costs little where it is hopeless. */
 #include "core/plan/search.h"
 
 #include <math.h>
 #include <string.h>
 
-enum { COARSE_MAX = 24, HALVINGS = 6, TRIED_MAX = 256 };
+enum { HALVINGS = 6, WORSE_MAX = 3 };
 static const double coarse_ratio = 1.2;
-static const double hopeless_ripple = 2.0; /* of the limit: slower only ripples more */
+static const double hopeless_ripple = 1.25; /* of the limit: fatigue slows a muscle and smooths a little */
+static const double fuse_ms = 800.0;
 static const double growths[] = {0.1, 0.25, 0.5};
 
 struct scan {
@@ -102,82 +104,114 @@ static enum status try_policy(struct scan *scan, const struct session_policy *po
     return STATUS_OK;
 }
 
-/* The coarse list of first frequencies, as indices. */
-static unsigned coarse_list(const struct session_frequencies *list, unsigned index[COARSE_MAX])
+/* Could the force be smooth enough at this rate at all? Run once on a muscle that is awake and does not tire:
+ * both only ripple more. */
+static enum status could_fuse(struct scan *scan, const struct session_policy *policy, bool *yes)
 {
-    unsigned count = 0;
-    double next = list->from;
-    for (unsigned i = 0; i < list->count && count < COARSE_MAX; i++) {
-        if (frequency_at(list, i) < next * (1.0 - 1e-12)) continue;
-        index[count++] = i;
-        next = frequency_at(list, i) * coarse_ratio;
-    }
-    if (index[count - 1] != list->count - 1 && count < COARSE_MAX) index[count++] = list->count - 1;
-    return count;
+    const struct session_problem *problem = scan->problem;
+    struct attempt_bench *bench = &scan->work->bench;
+    bench->space = problem->space;
+    settings_rate(&bench->space, policy->frequency_pps * (policy->pairs ? 2.0 : 1.0));
+    const struct solve_request request = {.frame = {.frequency_pps = policy->frequency_pps,
+                                                    .opening = policy->opening,
+                                                    .pairs = policy->pairs,
+                                                    .opening_gap_ms = 5.0,
+                                                    .ramp_up = {.ms = fuse_ms},
+                                                    .hold_ms = fuse_ms},
+                                          .before = problem->awake};
+    const struct solve_settings strongest = solve_strongest(bench);
+    struct solve_result result;
+    const enum status status = solve_at(bench, &request, &strongest, &result, scan->why);
+    const double ripple = result.attempt.hold.ripple_percent;
+    *yes = status == STATUS_OK && ripple <= hopeless_ripple * problem->demand->ripple_percent_max;
+    return status;
 }
 
+/* What a scan over first frequencies has found for its pattern and opening. */
+struct climb {
+    unsigned low, best, high, since; /* indices; coarse steps since the best */
+    bool any;
+    struct session_outcome outcome;
+};
+
 /* Halves towards the better neighbour on each side of the best first frequency. */
-static enum status refine(struct scan *scan, struct session_policy policy, unsigned low, unsigned best,
-                          unsigned high, struct session_outcome best_outcome)
+static enum status refine(struct scan *scan, struct session_policy policy, struct climb *climb)
 {
-    for (int i = 0; i < HALVINGS && (best - low > 1 || high - best > 1); i++) {
-        const bool below = best - low > high - best;
-        const unsigned middle = below ? low + (best - low) / 2 : best + (high - best + 1) / 2;
+    for (int i = 0; i < HALVINGS && (climb->best - climb->low > 1 || climb->high - climb->best > 1); i++) {
+        const unsigned below_width = climb->best - climb->low, above_width = climb->high - climb->best;
+        const bool below = below_width > above_width;
+        const unsigned middle = below ? climb->low + below_width / 2 : climb->best + (above_width + 1) / 2;
         struct session_outcome outcome;
         policy.frequency_pps = frequency_at(scan->frequencies, middle);
         const enum status status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
-        const bool wins = search_better(scan->problem->demand, &outcome, &best_outcome);
-        if (wins && below)
-            high = best;
-        else if (wins)
-            low = best;
-        else if (below)
-            low = middle;
+        const bool wins = search_better(scan->problem->demand, &outcome, &climb->outcome);
+        if (wins == below)
+            climb->high = wins ? climb->best : middle;
         else
-            high = middle;
+            climb->low = wins ? climb->best : middle;
         if (!wins) continue;
-        best = middle;
-        best_outcome = outcome;
+        climb->best = middle;
+        climb->outcome = outcome;
     }
     return STATUS_OK;
 }
 
-/* One pattern and opening: coarse from the top down, until the force is far from fused; then fine. */
+/* One pattern and opening: from slow to fast by fifths while it gets better, then fine. */
 static enum status scan_starts(struct scan *scan, struct session_policy policy)
 {
-    unsigned index[COARSE_MAX] = {0}, low = 0, best = 0, high = 0;
-    const unsigned count = coarse_list(scan->frequencies, index);
-    struct session_outcome best_outcome = {0};
-    for (unsigned i = count; i-- > 0;) {
+    const struct session_frequencies *list = scan->frequencies;
+    struct climb climb = {.any = false};
+    unsigned before = 0;
+    for (unsigned i = 0; i < list->count;) {
+        unsigned next = i + 1;
+        while (next + 1 < list->count && frequency_at(list, next) < frequency_at(list, i) * coarse_ratio)
+            next++;
         struct session_outcome outcome;
-        policy.frequency_pps = frequency_at(scan->frequencies, index[i]);
-        const enum status status = try_policy(scan, &policy, &outcome);
+        bool fuses = true;
+        policy.frequency_pps = frequency_at(list, i);
+        enum status status = next < list->count ? could_fuse(scan, &policy, &fuses)
+                                                : STATUS_OK; /* the fastest is always tried */
+        if (status == STATUS_OK && fuses) status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
-        if (i + 1 == count || search_better(scan->problem->demand, &outcome, &best_outcome)) {
-            best = index[i];
-            low = index[i > 0 ? i - 1 : 0];
-            high = index[i + 1 < count ? i + 1 : i];
-            best_outcome = outcome;
-        }
-        const struct plan_why *miss = &outcome.first_miss_why;
-        if (outcome.met == 0 && miss->reason == WHY_RIPPLE && miss->value > hopeless_ripple * miss->limit)
+        if (fuses && (!climb.any || search_better(scan->problem->demand, &outcome, &climb.outcome))) {
+            climb = (struct climb){before, i, next < list->count ? next : i, 0, true, outcome};
+        } else if (fuses && climb.outcome.met > 0 && ++climb.since == WORSE_MAX) {
             break;
+        }
+        before = i;
+        i = next;
     }
-    return refine(scan, policy, low, best, high, best_outcome);
+    return climb.any ? refine(scan, policy, &climb) : STATUS_OK;
 }
 
-/* Larger steps of frequency from the best start; then every ramp on what did best. */
+/* The best first frequency with another opening or pattern, and its two neighbours. */
+static enum status scan_about(struct scan *scan, struct session_policy policy, double frequency_pps)
+{
+    static const double factors[] = {1.0, 0.85, 1.2};
+    const struct session_frequencies *list = scan->frequencies;
+    for (size_t i = 0; i < sizeof factors / sizeof *factors; i++) {
+        const double steps = floor((frequency_pps * factors[i] - list->from) / list->step + 0.5);
+        if (steps < 0.0 || steps >= (double)list->count) continue;
+        policy.frequency_pps = frequency_at(list, (unsigned)steps);
+        struct session_outcome outcome;
+        const enum status status = try_policy(scan, &policy, &outcome);
+        if (status != STATUS_OK) return status;
+    }
+    return STATUS_OK;
+}
+
+/* Larger steps of frequency where it was stepped at all; then every ramp on what did best. */
 static enum status scan_growths(struct scan *scan)
 {
     struct session_policy policy = scan->result->policy;
-    for (size_t i = 0; policy.steps && i < sizeof growths / sizeof *growths; i++) {
-        struct session_outcome outcome;
+    const bool stepped = scan->result->outcome.frequency_last_pps > policy.frequency_pps;
+    struct session_outcome outcome;
+    for (size_t i = 0; stepped && i < sizeof growths / sizeof *growths; i++) {
         policy.growth = growths[i];
         const enum status status = try_policy(scan, &policy, &outcome);
         if (status != STATUS_OK) return status;
     }
-    struct session_outcome outcome;
     policy = scan->result->policy;
     policy.thorough = true;
     return try_policy(scan, &policy, &outcome);
@@ -186,7 +220,7 @@ static enum status scan_growths(struct scan *scan)
 /* Only the neighbourhood of a policy that is known: a few starts about it. */
 static enum status scan_near(struct scan *scan)
 {
-    static const double factors[] = {1.0, 0.8, 1.25};
+    static const double factors[] = {1.0, 1.25};
     const struct session_frequencies *list = scan->frequencies;
     for (size_t i = 0; i < sizeof factors / sizeof *factors; i++) {
         struct session_policy policy = scan->options->near;
@@ -226,7 +260,10 @@ enum status search_policies(struct session_work *work, const struct session_prob
             scan.frequencies = &list;
             const struct session_policy policy = {
                 .opening = opening, .pairs = pairs == 1, .steps = (demand->vary & VARY_FREQUENCY) && !fixed};
-            const enum status status = options->quick ? scan_near(&scan) : scan_starts(&scan, policy);
+            const bool others = result->any && result->outcome.met > 0;
+            const enum status status = options->quick ? scan_near(&scan)
+                                       : others ? scan_about(&scan, policy, result->policy.frequency_pps)
+                                                : scan_starts(&scan, policy);
             if (status != STATUS_OK) return status;
         }
     if (!result->any)

@@ -25,6 +25,8 @@ struct state {
     uint64_t at_us;
     struct solve_result present; /* settings in use, and their last attempt */
     bool have;
+    bool knows; /* what the settings in use give in the contraction that comes, in this frame */
+    struct attempt_result known;
     bool at_end;   /* no allowed setting reaches the target any more: the mean may sink */
     bool given_up; /* nor does any keep it within the tolerance */
     bool missed;   /* a scored contraction was missed already */
@@ -79,6 +81,7 @@ static void set_rate(struct state *state, double frequency_pps)
 {
     const unsigned extras = state->policy->opening > 1 ? state->policy->opening - 1 : 0;
     state->frame.frequency_pps = frequency_pps;
+    state->knows = false;
     settings_rate(&state->work->bench.space,
                   frequency_pps * (state->policy->pairs ? 2.0 : 1.0) + (double)extras);
 }
@@ -91,7 +94,8 @@ static struct solve_request request_of(const struct state *state)
                                   .aim = &state->solve_aim,
                                   .has_guess = state->have,
                                   .guess = state->present.settings,
-                                  .slopes = state->present.slopes};
+                                  .slopes = state->present.slopes,
+                                  .known = state->knows ? &state->known : NULL};
 }
 
 static enum status solve_now(struct state *state)
@@ -112,6 +116,7 @@ static enum status choose_ramp(struct state *state)
     if (status != STATUS_OK) return status;
     state->frame.ramp_up.shape = state->frame.ramp_down.shape = state->ramp.shape;
     state->frame.ramp_up.ms = state->ramp.ms;
+    state->knows = false;
     return solve_now(state);
 }
 
@@ -150,7 +155,7 @@ static enum status raise_frequency(struct state *state, double least_n, bool *ra
 
 static double keep_n(const struct state *state)
 {
-    return keep_share * state->problem->aim.tolerance_percent / 100.0 * state->problem->solve_target_n;
+    return solve_keep_share * state->problem->aim.tolerance_percent / 100.0 * state->problem->solve_target_n;
 }
 
 /* Are the settings in use still right for the next contraction? */
@@ -269,6 +274,7 @@ static enum status next_settings(struct state *state, unsigned number, struct pl
     struct attempt_bench *bench = &state->work->bench;
     const double target = state->problem->solve_target_n;
     enum status status;
+    state->knows = false;
     *reason = plan_why_make(WHY_NONE, 0.0, 0.0, "");
     const bool first_scored = number == state->problem->warm_up + 1;
     if (!state->have) {
@@ -287,6 +293,8 @@ static enum status next_settings(struct state *state, unsigned number, struct pl
         status = solve_at(bench, &request, &state->present.settings, &again, state->why);
         if (status != STATUS_OK) return status;
         would = again.attempt.hold;
+        state->known = again.attempt;
+        state->knows = true;
         if (still_right(state, &would) && !first_scored) {
             state->present.attempt = again.attempt;
             return STATUS_OK;

@@ -36,6 +36,8 @@ struct session_problem {
     double solve_target_n;      /* what settings aim at: the target, or less where a force cap asks for it */
     struct settings_space space;
     const struct predictor *rested;
+    const struct predictor
+        *awake; /* rested too, but potentiated and never tired: how fused a rate can be at best */
     uint64_t start_us;
     unsigned warm_up, contractions; /* in all: warm_up + scored */
     uint32_t common_period_us; /* first pulses stand on this period (several channels in turns); 0: free */

@@ -11,6 +11,7 @@
 #include <math.h>
 #include <string.h>
 
+const double solve_keep_share = 0.2;
 enum { ROUNDS = 8, POLISH_ROUNDS = 3, MEMORY = 32, CURRENT_TRIES = 5 };
 static const double quarter_middle = 0.125; /* of the hold: middle of its first quarter */
 static const double level_percent = 1.0;    /* quarters within this count as level */
@@ -43,6 +44,7 @@ struct solver {
     struct rail rail;
     struct memory memory;
     struct solve_slopes slopes;
+    struct solve_result stands; /* the last run: what the bench still holds; contraction.repeat 0: none */
     struct message *why;
 };
 
@@ -134,11 +136,11 @@ static enum status try_at(struct solver *solver, uint32_t from, uint32_t to, str
             *attempt = memory->entry[i].attempt;
             return STATUS_OK;
         }
-    struct solve_result one;
     const struct solve_settings settings = {from, to, solver->rail.other};
-    const enum status status = solve_at(solver->bench, solver->request, &settings, &one, solver->why);
+    const enum status status =
+        solve_at(solver->bench, solver->request, &settings, &solver->stands, solver->why);
     if (status != STATUS_OK) return status;
-    *attempt = one.attempt;
+    *attempt = solver->stands.attempt;
     if (memory->used < MEMORY) {
         memory->entry[memory->used].from = from;
         memory->entry[memory->used].to = to;
@@ -163,13 +165,12 @@ static double badness(const struct solver *solver, double mean_n, double droop_p
            0.1 * fmax(0.0, droop - 0.95 * aim->droop_percent_max);
 }
 
-/* Of two attempts as near, the one that keeps rise, ripple and overshoot too. */
+/* Of two attempts as near, the one that meets the demand. */
 static double badness_of(const struct solver *solver, const struct attempt_result *attempt)
 {
     const double value = badness(solver, attempt->hold.mean_n, slope_percent(&attempt->hold));
-    const enum plan_why_reason miss = contraction_miss(solver->request->aim, &attempt->hold, 0.002).reason;
-    const bool other = miss == WHY_RIPPLE || miss == WHY_RISE || miss == WHY_OVERSHOOT;
-    return isnan(value) ? (double)INFINITY : value + (other ? 0.05 : 0.0);
+    const bool misses = contraction_miss(solver->request->aim, &attempt->hold, 0.002).reason != WHY_NONE;
+    return isnan(value) ? (double)INFINITY : value + (misses ? 0.05 : 0.0);
 }
 
 /* The best attempt so far; ties to the least charge. */
@@ -371,6 +372,13 @@ static enum status spend(struct solver *solver, struct best *best)
 static enum status solve_rail(struct solver *solver, double guess_from, double guess_to, struct best *best)
 {
     solver->memory.used = 0;
+    const struct solve_request *request = solver->request;
+    if (request->known && request->guess.other == solver->rail.other) {
+        solver->memory.entry[0].from = request->guess.from;
+        solver->memory.entry[0].to = request->guess.to;
+        solver->memory.entry[0].attempt = *request->known;
+        solver->memory.used = 1;
+    }
     *best = (struct best){.from = solver->rail.from, .to = solver->rail.from, .badness = (double)INFINITY};
     enum status status = iterate(solver, guess_from, guess_to, best);
     if (status == STATUS_OK && best->badness < (double)INFINITY) status = polish(solver, best);
@@ -413,12 +421,21 @@ static enum status finish(struct solver *solver, const struct best *best, struct
 {
     const struct contraction_aim *aim = solver->request->aim;
     const struct solve_settings settings = {best->from, best->to, solver->rail.other};
-    const enum status status = solve_at(solver->bench, solver->request, &settings, result, solver->why);
+    const struct solve_settings *stood = &solver->stands.settings;
+    const bool stands = solver->stands.contraction.repeat > 0 && stood->from == settings.from &&
+                        stood->to == settings.to && stood->other == settings.other;
+    enum status status = STATUS_OK;
+    if (stands)
+        *result = solver->stands;
+    else
+        status = solve_at(solver->bench, solver->request, &settings, result, solver->why);
     if (status != STATUS_OK) return status;
     const bool top = best->from == solver->rail.to || best->to == solver->rail.to;
     const bool bottom = best->from == solver->rail.from || best->to == solver->rail.from;
-    result->spent = top && result->attempt.hold.mean_n < aim->target_n;
-    result->floor = bottom && result->attempt.hold.mean_n > aim->target_n;
+    const double near = solve_keep_share * aim->tolerance_percent / 100.0;
+    result->spent = top && result->attempt.hold.mean_n < aim->target_n * (1.0 - near);
+    result->floor = bottom && result->attempt.hold.mean_n > aim->target_n * (1.0 + near);
+    result->slopes = solver->slopes;
     return STATUS_OK;
 }
 
@@ -464,6 +481,5 @@ enum status solve_settings(struct attempt_bench *bench, const struct solve_reque
     if (status == STATUS_OK && rail_spent(&solver, &best) && solver.rail.from < solver.rail.to)
         status = spend(&solver, &best);
     if (status != STATUS_OK) return status;
-    result->slopes = solver.slopes;
     return finish(&solver, &best, result);
 }

@@ -27,6 +27,8 @@ struct solve_request {
     bool has_guess;
     struct solve_settings guess; /* the settings of the contraction before */
     struct solve_slopes slopes;  /* and what was learned there */
+    const struct attempt_result
+        *known; /* what the guess gives from `before` in this frame; NULL: not run yet */
 };
 
 struct solve_result {
@@ -37,6 +39,10 @@ struct solve_result {
     bool spent; /* no allowed setting reaches the target */
     bool floor; /* the least allowed setting gives more than the target */
 };
+
+/* Share of the tolerance within which a mean is as good as on target (this project's choice: it makes blocks
+ * that a person can read). */
+extern const double solve_keep_share;
 
 enum status solve_settings(struct attempt_bench *bench, const struct solve_request *request,
                            struct solve_result *result, struct message *why);
