@@ -9,8 +9,6 @@
 #include <math.h>
 #include <string.h>
 
-static const double keep_share =
-    0.2; /* of the tolerance: settings stay while the mean is this near the target */
 static const double search_margin = 0.002; /* of every bound: the search engine's error, ten times over */
 
 struct state {
