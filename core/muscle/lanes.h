@@ -5,10 +5,21 @@
 #define PULSEWRIGHT_CORE_MUSCLE_LANES_H
 #include "core/muscle/muscle.h"
 
-typedef double lanes_t __attribute__((vector_size(64)));
+#include <math.h> /* also says whether this is glibc, whose loader chooses between clones */
+
+/* may_alias: rows of plain arrays are read and written as vectors */
+typedef double lanes_t __attribute__((vector_size(64), may_alias));
 typedef long long lanes_mask_t __attribute__((vector_size(64)));
 _Static_assert(sizeof(lanes_t) == LANE_WIDTH * sizeof(double), "a vector is a row of lanes");
 #define LANES_INLINE static inline __attribute__((always_inline))
+
+/* One version an instruction set, chosen as the program starts. Not under the sanitizers, which run later
+ * than that choice. */
+#if defined(__x86_64__) && defined(__GLIBC__) && !defined(__SANITIZE_ADDRESS__) && !defined(__clang__)
+#define LANES_CLONES __attribute__((target_clones("avx512f", "avx2", "default")))
+#else
+#define LANES_CLONES
+#endif
 
 LANES_INLINE void lanes_greater(lanes_t *out, const lanes_t *a, const lanes_t *b)
 {
@@ -19,6 +30,18 @@ LANES_INLINE void lanes_lesser(lanes_t *out, const lanes_t *a, const lanes_t *b)
 {
     const lanes_mask_t mask = *a < *b;
     *out = (lanes_t)((mask & (lanes_mask_t)*a) | (~mask & (lanes_mask_t)*b));
+}
+/* out = mask ? a : b */
+LANES_INLINE void lanes_select(lanes_t *out, const lanes_mask_t *mask, const lanes_t *a, const lanes_t *b)
+{
+    *out = (lanes_t)((*mask & (lanes_mask_t)*a) | (~*mask & (lanes_mask_t)*b));
+}
+LANES_INLINE double lanes_greatest(const lanes_t *a)
+{
+    double greatest = (*a)[0];
+    for (int i = 1; i < LANE_WIDTH; i++)
+        if (!((*a)[i] <= greatest)) greatest = (*a)[i];
+    return greatest;
 }
 LANES_INLINE void lanes_magnitude(lanes_t *out, const lanes_t *a)
 {

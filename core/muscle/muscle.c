@@ -4,6 +4,8 @@
  * Tiers, potentiation and the cost of activation are this project's. */
 #include "core/muscle/muscle.h"
 
+#include "core/muscle/lanes.h"
+
 #include <math.h>
 #include <string.h>
 
@@ -115,7 +117,7 @@ static void rest_lane(const struct muscle *muscle, struct muscle_state *state, u
     state->fatigue[lane] = muscle->pool.fatigue[k];
     state->dA_least[lane] = -(double)INFINITY;
     state->dtau1_most[lane] = (double)INFINITY;
-    state->t_last[lane] = (double)NAN;
+    state->t_last[lane] = MUSCLE_NEVER;
 }
 
 void muscle_rest(const struct muscle *muscle, struct muscle_state *state)
@@ -172,29 +174,43 @@ static void part_lanes(const struct muscle *muscle, struct muscle_state *state, 
     }
 }
 
+/* Steps 2 to 5 of a pulse on every lane whose weight is above 0. */
+LANES_CLONES static void touch_lanes(const struct muscle_parameters *p, struct muscle_state *state,
+                                     const double *weight, double time_ms)
+{
+    const bool above = isfinite(p->R0_above_Km);
+    const lanes_t zero = {0}, one = zero + 1, now = zero + time_ms;
+    for (unsigned at = 0; at < state->lanes; at += LANE_WIDTH) {
+        const lanes_t w = *(const lanes_t *)&weight[at];
+        const lanes_mask_t touched = w > zero;
+        lanes_t *t_last = (lanes_t *)&state->t_last[at], *S = (lanes_t *)&state->S[at],
+                *A = (lanes_t *)&state->A[at];
+        lanes_t *old_w = (lanes_t *)&state->w[at];
+        const lanes_t since = (*t_last - now) / *(const lanes_t *)&state->tau_c[at];
+        lanes_t e, add, kept = 1 - p->beta_A_per_pulse * *(const lanes_t *)&state->fatigue[at] * w;
+        lanes_exp(&e, &since);
+        const lanes_t R0 = above ? *(const lanes_t *)&state->Km[at] + p->R0_above_Km : zero + p->R0;
+        const lanes_t R = 1 + (R0 - 1) * e;
+        lanes_select(&add, &touched, &R, &zero);
+        *S += add;
+        lanes_greater(&kept, &kept, &zero);
+        lanes_select(&kept, &touched, &kept, &one);
+        *A *= kept;
+        lanes_select(t_last, &touched, &now, t_last);
+        lanes_select(old_w, &touched, &w, old_w);
+    }
+}
+
 void muscle_pulse(const struct muscle *muscle, struct muscle_state *state, double rho, double time_ms)
 {
-    const struct muscle_parameters *p = &muscle->parameters;
     double weight[MUSCLE_TIERS_MAX];
+    LANE_ALIGNED double of_lane[LANES_MAX];
     if (!(rho > 0)) return;
     pool_recruit(&muscle->pool, rho, weight);
-    if (!p->has_pool) part_lanes(muscle, state, weight);
-    const bool above = isfinite(p->R0_above_Km);
-    unsigned done = LANES_MAX;
-    for (unsigned k = 0; k < muscle->pool.tiers; k++) {
-        const unsigned lane = state->lane[k];
-        if (lane == done || weight[k] == 0) continue;
-        done = lane;
-        const double R0 = above ? state->Km[lane] + p->R0_above_Km : p->R0;
-        const double R = isnan(state->t_last[lane])
-                             ? 1
-                             : 1 + (R0 - 1) * exp(-(time_ms - state->t_last[lane]) / state->tau_c[lane]);
-        const double kept = 1 - p->beta_A_per_pulse * state->fatigue[lane] * weight[k];
-        state->w[lane] = weight[k];
-        state->S[lane] += R;
-        state->A[lane] *= kept > 0 ? kept : 0;
-        state->t_last[lane] = time_ms;
-    }
+    if (!muscle->parameters.has_pool) part_lanes(muscle, state, weight);
+    memset(of_lane, 0, sizeof of_lane);
+    for (unsigned k = 0; k < muscle->pool.tiers; k++) of_lane[state->lane[k]] = weight[k];
+    touch_lanes(&muscle->parameters, state, of_lane, time_ms);
 }
 
 double muscle_force_n(const struct muscle_state *state)

@@ -14,6 +14,9 @@
 enum { LANE_WIDTH = 8, LANES_MAX = MUSCLE_TIERS_MAX, LANE_VECTORS_MAX = LANES_MAX / LANE_WIDTH };
 #define LANE_ALIGNED __attribute__((aligned(64)))
 
+/* Long enough ago that summation has forgotten it. */
+#define MUSCLE_NEVER (-1e300)
+
 /* Constants. A lane's constants are those of its tiers. */
 struct muscle {
     struct muscle_parameters parameters;
@@ -35,8 +38,8 @@ struct muscle_state {
     LANE_ALIGNED double tau_c[LANES_MAX], slower_inverse[LANES_MAX], fatigue[LANES_MAX];
     /* 0 where the state stands at its bound and may only leave it, else -infinity or infinity: */
     LANE_ALIGNED double dA_least[LANES_MAX], dtau1_most[LANES_MAX];
-    double t_last[LANES_MAX];             /* of the last pulse that touched it, ms; NAN: none yet */
-    unsigned char lane[MUSCLE_TIERS_MAX]; /* of a tier */
+    LANE_ALIGNED double t_last[LANES_MAX]; /* of the last pulse that touched it, ms; MUSCLE_NEVER: none yet */
+    unsigned char lane[MUSCLE_TIERS_MAX];  /* of a tier */
     unsigned lanes;
     bool bound_A, bound_tau1; /* a bound was reached at some time */
 };

@@ -9,13 +9,8 @@
 #include "core/predict/engine.h"
 
 #include <math.h>
+#include <stdint.h>
 #include <string.h>
-
-#if defined(__x86_64__) && defined(__GLIBC__) && !defined(__SANITIZE_ADDRESS__)
-#define ENGINE_CLONES __attribute__((target_clones("avx512f", "avx2", "default")))
-#else
-#define ENGINE_CLONES
-#endif
 
 /* Local tolerances, found against CVODE over drawn parameters (tests/core/predict): default 1e-4 of peak and
  * 1e-5 of capacity overall, exact 1e-7 and 1e-8. */
@@ -25,6 +20,9 @@
 #define QUIET 1e-13
 /* Within this of a bound, relative, a state stands on it. */
 #define BOUND_NEAR 1e-12
+/* Activation needs at least so many tau_c to get there. */
+#define QUIET_WAIT 25.0
+#define STEP_GROWTH_MOST 6.0
 
 enum { STAGES = 7 };
 
@@ -33,6 +31,8 @@ struct trial {
     LANE_ALIGNED double y[LANE_VARIABLES][LANES_MAX];
     LANE_ALIGNED double derivative[LANE_VARIABLES][LANES_MAX];
     LANE_ALIGNED double C[LANES_MAX], S[LANES_MAX];
+    double error; /* over the tolerance */
+    double past;  /* above 0: a state may be beyond its bound */
 };
 
 void engine_init(struct engine *engine, const struct muscle *muscle, bool exact, const struct motion *motion)
@@ -42,6 +42,8 @@ void engine_init(struct engine *engine, const struct muscle *muscle, bool exact,
     muscle_rest(&engine->muscle, &engine->state);
     engine->tolerance = exact ? TOLERANCE_EXACT : TOLERANCE_DEFAULT;
     engine->motion = motion;
+    for (unsigned i = 0; i < engine->state.lanes; i++)
+        engine->quiet_wait_ms = fmax(engine->quiet_wait_ms, QUIET_WAIT * engine->state.tau_c[i]);
 }
 
 static double drive_factor(const struct engine *engine, double time_ms)
@@ -80,19 +82,32 @@ LANES_INLINE void load_state(lanes_t y[LANE_VARIABLES], const struct muscle_stat
     y[LANE_P] = *(const lanes_t *)&state->P[at];
 }
 
-/* Derivatives of the state as it stands. */
-ENGINE_CLONES static void refresh(struct engine *engine, double factor)
+/* Derivatives of the state as it stands. Returns the greatest rate of change of x = C/(K' + C) in a driven
+ * lane, relative, per ms: C' = (S - C)/tau_c, and steps of the order of (K' + C)/C' are where a polynomial
+ * stops to follow x. */
+LANES_CLONES static double refresh(struct engine *engine, double factor)
 {
     const struct muscle_state *state = &engine->state;
+    const lanes_t zero = {0};
+    lanes_t fastest = zero;
     for (unsigned at = 0; at < state->lanes; at += LANE_WIDTH) {
         struct lanes_constants constants;
         lanes_t y[LANE_VARIABLES], dy[LANE_VARIABLES];
         load_constants(&constants, engine, at);
         load_state(y, state, at);
-        const lanes_t drive = *(const lanes_t *)&state->w[at] * factor;
-        lanes_derive(dy, y, (const lanes_t *)&state->C[at], &drive, &constants);
+        const lanes_t w = *(const lanes_t *)&state->w[at], C = *(const lanes_t *)&state->C[at],
+                      drive = w * factor;
+        lanes_derive(dy, y, &C, &drive, &constants);
         for (int i = 0; i < LANE_VARIABLES; i++) *(lanes_t *)&engine->derivative[i][at] = dy[i];
+        const lanes_t D = y[LANE_KM] * (1 + constants.gain * (1 - y[LANE_P])) + C;
+        lanes_t rate = *(const lanes_t *)&state->S[at] - C;
+        lanes_magnitude(&rate, &rate);
+        rate = rate / (*(const lanes_t *)&state->tau_c[at] * D);
+        const lanes_mask_t driven = w > zero;
+        lanes_select(&rate, &driven, &rate, &zero);
+        lanes_greater(&fastest, &fastest, &rate);
     }
+    return lanes_greatest(&fastest);
 }
 
 /* The pair's coefficients (Dormand and Prince 1980, RK5(4)7M); the row of the last stage is the new state. */
@@ -110,10 +125,13 @@ static const double row_error[] = {71.0 / 57600,      0,          -71.0 / 16695,
 LANES_INLINE void combine(lanes_t out[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES],
                           const lanes_t (*k)[LANE_VARIABLES], const double *row, int count, double h)
 {
+    double by[STAGES];
+    for (int j = 0; j < count; j++) by[j] = h * row[j];
     for (int i = 0; i < LANE_VARIABLES; i++) {
-        lanes_t sum = k[0][i] * row[0];
-        for (int j = 1; j < count; j++) sum += k[j][i] * row[j];
-        out[i] = y[i] + sum * h;
+        lanes_t sum = y[i];
+        for (int j = 0; j < count; j++) /* the newest last: it is waited for */
+            if (row[j] != 0) sum += k[j][i] * by[j];
+        out[i] = sum;
     }
 }
 
@@ -124,9 +142,10 @@ LANES_INLINE void activation_after(lanes_t *out, const lanes_t *C, const lanes_t
     *out = (*C + *S_rate * h) * *decay;
 }
 
-/* One tried step of one row of lanes; the greatest error over its tolerance of each lane into *error. */
+/* One tried step of one row of lanes; the greatest error of each lane into *error, how far it is beyond a
+ * bound into *past. */
 LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsigned at, double h,
-                          const double factor[STAGES], lanes_t *error)
+                          const double factor[STAGES], lanes_t *error, lanes_t *past)
 {
     const struct muscle_state *state = &engine->state;
     struct lanes_constants constants;
@@ -170,7 +189,7 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
 
     *(lanes_t *)&trial->C[at] = Cs;
     *(lanes_t *)&trial->S[at] = S * e10;
-    lanes_t zero = {0}, miss[LANE_VARIABLES], size;
+    lanes_t miss[LANE_VARIABLES], size;
     combine(miss, (const lanes_t[LANE_VARIABLES]){{0}}, k, row_error, STAGES, h);
     for (int i = 0; i < LANE_VARIABLES; i++) {
         *(lanes_t *)&trial->y[i][at] = z[i];
@@ -179,49 +198,53 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
     }
     lanes_greater(&size, (const lanes_t *)&engine->scale[at], &z[LANE_PHI]);
     size += 1e-30;
-    *error = zero;
-    const lanes_t of_phi = miss[LANE_PHI] / size, of_A = miss[LANE_A] * (1 / constants.A_rest),
+    const lanes_t inverse = 1 / size;
+    const lanes_t of_phi = miss[LANE_PHI] * inverse, of_A = miss[LANE_A] * (1 / constants.A_rest),
                   of_Km = miss[LANE_KM] * (1 / constants.Km_rest),
                   of_tau1 = miss[LANE_TAU1] * (1 / constants.tau1_rest);
-    lanes_greater(error, error, &of_phi);
-    lanes_greater(error, error, &of_A);
+    const lanes_t under = z[LANE_A] * (-1 / constants.A_rest),
+                  over = z[LANE_TAU1] * (1 / engine->muscle.tau1_most_ms) - 1;
+    lanes_greater(error, &of_A, &of_phi);
     lanes_greater(error, error, &of_Km);
     lanes_greater(error, error, &of_tau1);
     lanes_greater(error, error, &miss[LANE_P]);
+    lanes_greater(past, &under, &over);
 }
 
-/* A step of h from the state, not yet taken. Returns its error over the tolerance. */
-ENGINE_CLONES static double try_step(const struct engine *engine, struct trial *trial, double h,
-                                     const double factor[STAGES])
+/* A step of h from the state, not yet taken. */
+LANES_CLONES static void try_step(const struct engine *engine, struct trial *trial, double h,
+                                  const double factor[STAGES])
 {
-    lanes_t worst = {0}, error;
+    lanes_t worst = {0}, farthest = {0}, error, past;
+    farthest -= 1;
     for (unsigned at = 0; at < engine->state.lanes; at += LANE_WIDTH) {
-        try_row(engine, trial, at, h, factor, &error);
-        lanes_greater(&worst, &worst, &error);
+        try_row(engine, trial, at, h, factor, &error, &past);
+        lanes_greater(&worst, &error,
+                      &worst); /* what is no number stays seen: comparisons with it are false */
+        lanes_greater(&farthest, &past, &farthest);
     }
-    double greatest = 0;
-    for (int i = 0; i < LANE_WIDTH; i++)
-        if (!(worst[i] <= greatest)) greatest = worst[i];
-    return greatest / engine->tolerance;
+    trial->error = lanes_greatest(&worst) / engine->tolerance;
+    trial->past = lanes_greatest(&farthest);
 }
 
 /* Makes a tried step the state. */
-static void take(struct engine *engine, const struct trial *trial, double to_ms)
+LANES_CLONES static void take(struct engine *engine, const struct trial *trial)
 {
     struct muscle_state *state = &engine->state;
-    const size_t size = sizeof(double) * ((state->lanes + LANE_WIDTH - 1) / LANE_WIDTH * LANE_WIDTH);
-    memcpy(state->C, trial->C, size);
-    memcpy(state->S, trial->S, size);
-    memcpy(state->phi, trial->y[LANE_PHI], size);
-    memcpy(state->A, trial->y[LANE_A], size);
-    memcpy(state->Km, trial->y[LANE_KM], size);
-    memcpy(state->tau1, trial->y[LANE_TAU1], size);
-    memcpy(state->P, trial->y[LANE_P], size);
-    for (int i = 0; i < LANE_VARIABLES; i++) memcpy(engine->derivative[i], trial->derivative[i], size);
-    for (unsigned i = 0; i < state->lanes; i++)
-        if (state->phi[i] > engine->scale[i]) engine->scale[i] = state->phi[i];
-    engine->time_ms = to_ms;
-    engine->steps++;
+    for (unsigned at = 0; at < state->lanes; at += LANE_WIDTH) {
+        const lanes_t *phi = (const lanes_t *)&trial->y[LANE_PHI][at];
+        lanes_t *scale = (lanes_t *)&engine->scale[at];
+        *(lanes_t *)&state->C[at] = *(const lanes_t *)&trial->C[at];
+        *(lanes_t *)&state->S[at] = *(const lanes_t *)&trial->S[at];
+        *(lanes_t *)&state->phi[at] = *phi;
+        *(lanes_t *)&state->A[at] = *(const lanes_t *)&trial->y[LANE_A][at];
+        *(lanes_t *)&state->Km[at] = *(const lanes_t *)&trial->y[LANE_KM][at];
+        *(lanes_t *)&state->tau1[at] = *(const lanes_t *)&trial->y[LANE_TAU1][at];
+        *(lanes_t *)&state->P[at] = *(const lanes_t *)&trial->y[LANE_P][at];
+        for (int i = 0; i < LANE_VARIABLES; i++)
+            *(lanes_t *)&engine->derivative[i][at] = *(const lanes_t *)&trial->derivative[i][at];
+        lanes_greater(scale, phi, scale);
+    }
 }
 
 /* Signed distance of the lane that is nearest to a bound it does not stand on, or farthest beyond it (then
@@ -243,6 +266,7 @@ static double beyond(const struct engine *engine, const double *A, const double 
 static void settle_bounds(struct engine *engine)
 {
     struct muscle_state *state = &engine->state;
+    engine->standing = false;
     const double near_A = BOUND_NEAR * engine->muscle.parameters.A_rest_n_per_ms,
                  most = engine->muscle.tau1_most_ms;
     for (unsigned i = 0; i < state->lanes; i++) {
@@ -257,23 +281,15 @@ static void settle_bounds(struct engine *engine)
         if (least != state->dA_least[i] || greatest != state->dtau1_most[i]) engine->fresh = false;
         state->dA_least[i] = least;
         state->dtau1_most[i] = greatest;
+        engine->standing |= stands_A || stands_tau1;
     }
 }
 
-/* The longest step worth trying first after a pulse: x = C/(K' + C) changes with C' = (S - C)/tau_c, and a
- * step of the order of (K' + C)/C' is where a polynomial stops to follow it. */
+/* The longest step worth trying first after a pulse. */
 static double first_step(const struct engine *engine)
 {
-    const struct muscle_state *state = &engine->state;
-    double least = (double)INFINITY;
-    for (unsigned i = 0; i < state->lanes; i++) {
-        const double half = state->Km[i] * (1 + engine->muscle.gain * (1 - state->P[i]));
-        const double rise = fabs(state->S[i] - state->C[i]) / state->tau_c[i];
-        const double scale = (half + state->C[i]) / (rise + 1e-300);
-        if (state->w[i] > 0 && scale < least) least = scale;
-    }
-    const double share = engine->tolerance < TOLERANCE_DEFAULT ? 0.08 : 0.3;
-    return isfinite(least) ? share * least : 1;
+    const double share = engine->tolerance < 1e-7 ? 0.08 : 0.3;
+    return engine->fastest > 0 ? share / engine->fastest : 1;
 }
 
 /* True where force and activation have died away in every lane. */
@@ -314,7 +330,7 @@ static void relax(struct engine *engine, double to_ms)
 static void make_fresh(struct engine *engine)
 {
     if (engine->fresh) return;
-    refresh(engine, drive_factor(engine, engine->time_ms));
+    engine->fastest = refresh(engine, drive_factor(engine, engine->time_ms));
     engine->fresh = true;
 }
 
@@ -338,7 +354,7 @@ static double meet_bound(const struct engine *engine, struct trial *trial, doubl
         found = low - at_low * (high - low) / (at_high - at_low);
         if (!(found > low) || !(found < high)) found = 0.5 * (low + high);
         stage_factors(engine, found, factor);
-        (void)try_step(engine, trial, found, factor);
+        try_step(engine, trial, found, factor);
         const double out = beyond(engine, trial->y[LANE_A], trial->y[LANE_TAU1]);
         if (fabs(out) <= BOUND_NEAR) return found;
         if (out > 0) {
@@ -352,15 +368,55 @@ static double meet_bound(const struct engine *engine, struct trial *trial, doubl
         }
     }
     stage_factors(engine, high, factor);
-    (void)try_step(engine, trial, high, factor);
+    try_step(engine, trial, high, factor);
     return high;
+}
+
+/* What an error over its tolerance lets the next step be, in steps: 0.9 error^(-1/5), within a percent. The
+ * logarithm is read off the number's own bits, straight between powers of two. */
+static double next_share(double error)
+{
+    int64_t bits;
+    if (!(error > 1e-5)) return STEP_GROWTH_MOST;
+    memcpy(&bits, &error, sizeof bits);
+    const double logarithm = (double)(bits - ((int64_t)1023 << 52)) * 0x1p-52;
+    const double exponent = -0.2 * logarithm; /* within -205 .. 4 */
+    bits = (int64_t)((exponent + 1023) * 0x1p52);
+    double share;
+    memcpy(&share, &bits, sizeof share);
+    share *= 0.9;
+    return share < STEP_GROWTH_MOST ? share : STEP_GROWTH_MOST;
+}
+
+/* Tries steps until one is accepted; *ended: it goes to the very end. Returns its length. */
+static double find_step(struct engine *engine, struct trial *trial, double left_ms, bool *ended)
+{
+    double factor[STAGES];
+    for (;;) {
+        double h = engine->step_ms;
+        *ended = h >= left_ms;
+        if (*ended)
+            h = left_ms;
+        else if (h > 0.5 * left_ms)
+            h = 0.5 * left_ms;
+        stage_factors(engine, h, factor);
+        try_step(engine, trial, h, factor);
+        const double share = next_share(trial->error);
+        if (trial->error <= 1) {
+            const double next_ms = h * share;
+            if (next_ms > engine->step_ms || !*ended) engine->step_ms = next_ms;
+            return h;
+        }
+        engine->rejected++;
+        engine->step_ms = h * (share > 0.2 ? share : 0.2);
+    }
 }
 
 void engine_step(struct engine *engine, double to_ms)
 {
     struct trial trial;
-    double factor[STAGES];
-    if (!engine->given || quiet(engine)) {
+    bool ended;
+    if (!engine->given || (engine->time_ms > engine->quiet_ms && quiet(engine))) {
         relax(engine, to_ms);
         return;
     }
@@ -370,30 +426,14 @@ void engine_step(struct engine *engine, double to_ms)
     }
     make_fresh(engine);
     if (!(engine->step_ms > 0)) engine->step_ms = first_step(engine);
-    for (;;) {
-        const double left = to_ms - engine->time_ms;
-        double h = engine->step_ms;
-        const bool cut = h >= left;
-        if (cut)
-            h = left;
-        else if (h > 0.5 * left)
-            h = 0.5 * left;
-        stage_factors(engine, h, factor);
-        const double error = try_step(engine, &trial, h, factor);
-        const double wanted = error > 0 ? 0.9 * pow(error, -0.2) : 5;
-        if (!(error <= 1)) {
-            engine->rejected++;
-            engine->step_ms = h * (wanted > 0.2 ? wanted : 0.2);
-            continue;
-        }
-        const double next = h * (wanted < 5 ? wanted : 5);
-        if (next > engine->step_ms || !cut) engine->step_ms = next;
-        const bool met = beyond(engine, trial.y[LANE_A], trial.y[LANE_TAU1]) > BOUND_NEAR;
-        if (met) h = meet_bound(engine, &trial, h);
-        take(engine, &trial, cut && !met ? to_ms : engine->time_ms + h);
-        break;
-    }
-    settle_bounds(engine);
+    double h = find_step(engine, &trial, to_ms - engine->time_ms, &ended);
+    const bool met =
+        trial.past > BOUND_NEAR && beyond(engine, trial.y[LANE_A], trial.y[LANE_TAU1]) > BOUND_NEAR;
+    if (met) h = meet_bound(engine, &trial, h);
+    take(engine, &trial);
+    engine->time_ms = ended && !met ? to_ms : engine->time_ms + h;
+    engine->steps++;
+    if (met || engine->standing) settle_bounds(engine);
     if (engine->motion) engine->fresh = false; /* the drive may have a corner here */
 }
 
@@ -412,6 +452,7 @@ void engine_pulse(struct engine *engine, double rho)
         if (lane >= before && k > 0) engine->scale[lane] = engine->scale[engine->state.lane[k - 1]];
     }
     engine->given = true;
+    engine->quiet_ms = engine->time_ms + engine->quiet_wait_ms;
     engine->fresh = false;
     engine->step_ms = 0;
 }

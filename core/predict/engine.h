@@ -18,6 +18,10 @@ struct engine {
     double tolerance; /* of a step, relative */
     bool fresh;       /* the derivatives are those of the state */
     bool given;       /* a pulse has been given */
+    bool standing;    /* a state stands on its bound */
+    double quiet_ms;  /* activation can not have died away before this */
+    double quiet_wait_ms;
+    double fastest;   /* greatest relative rate of x where `fresh`, 1/ms: what a first step is chosen from */
     const struct motion *motion;
     double motion_end_ms; /* of the straight piece of motion now; infinity without */
     size_t motion_piece;

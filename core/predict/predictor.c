@@ -36,6 +36,7 @@ struct predictor *predictor_new(const struct muscle_parameters *parameters, bool
         (void)status_fail(why, STATUS_INTERNAL, "out of memory");
         return NULL;
     }
+    memset(predictor, 0, sizeof *predictor);
     engine_init(&predictor->engine, &muscle, exact, motion);
     return predictor;
 }
@@ -67,8 +68,15 @@ void predictor_advance(struct predictor *predictor, double time_ms)
 
 void predictor_pulse(struct predictor *predictor, double duration_us, double current_ma)
 {
-    const struct recruitment *recruitment = &predictor->engine.muscle.parameters.recruitment;
-    engine_pulse(&predictor->engine, recruitment_of(recruitment, duration_us, current_ma));
+    double rho = predictor->rho;
+    if (!(rho > 0) || duration_us != predictor->duration_us || current_ma != predictor->current_ma) {
+        rho = recruitment_of(&predictor->engine.muscle.parameters.recruitment, duration_us, current_ma);
+        if (!(rho > 0)) return;
+        predictor->duration_us = duration_us;
+        predictor->current_ma = current_ma;
+        predictor->rho = rho;
+    }
+    engine_pulse(&predictor->engine, rho);
 }
 
 double predictor_force_n(const struct predictor *predictor)

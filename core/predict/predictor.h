@@ -5,6 +5,8 @@
 
 struct predictor {
     struct engine engine;
+    /* the settings of the last pulse that recruited, and what it recruited: mostly the next one's too */
+    double duration_us, current_ma, rho;
 };
 _Static_assert(sizeof(struct predictor) % 64 == 0, "aligned_alloc takes whole multiples");
 
