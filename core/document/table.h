@@ -29,8 +29,14 @@ struct table {
     char **name;  /* columns */
     char **cell;  /* rows x columns */
     size_t *line; /* of each row in the file */
+    char *text;   /* what the cells point into */
 };
 enum status table_parse(const struct document_bytes *bytes, struct table *table, struct message *why);
 void table_free(struct table *table);
+/* Index of a column, -1 where there is none. */
+long table_column(const struct table *table, const char *name);
+/* A cell as a strict decimal within a range; the message names file, line and column (the cell's number). */
+enum status table_number(const struct table *table, const char *path, size_t row, size_t column, double least, double most, double *value,
+                         struct message *why);
 
 #endif

@@ -9,7 +9,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum { CHANNELS_MAX = 8, SHOWN_PER_CHANNEL = 5, ATTENTION_DC_NA = 10000 };
+enum { CHANNELS_MAX = 8, SHOWN_PER_CHANNEL = 5, SHARE_WITHOUT_END = 1000000, ATTENTION_DC_NA = 10000 };
 
 /* A figure in its shown unit for one unit of the comparison. */
 static double shown_per_unit(enum dose_figure figure)
@@ -52,7 +52,7 @@ static void note(struct player *player, const struct pulse *pulse)
         if (f == DOSE_GAP && value[f] == UINT64_MAX) continue; /* no pulse before */
         const double above = f == DOSE_GAP ? (double)limit[f] : (double)value[f];
         const double below = f == DOSE_GAP ? (double)value[f] : (double)limit[f];
-        const double share = below > 0 ? above / below : above > 0 ? HUGE_VAL : 0;
+        const double share = below > 0 ? above / below : above > 0 ? SHARE_WITHOUT_END : 0;
         struct ledger_figure *figure = &player->figure[f];
         if (share <= figure->share && figure->channel) continue;
         *figure = (struct ledger_figure){.channel = player->channel->channel,
