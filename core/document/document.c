@@ -1,5 +1,5 @@
-/* What all documents share: files read whole with their digest, files written whole, text being made, numbers and days. The goal of
- * this code: a file is read once and nothing on disk is ever half written or lost. */
+/* What all documents share: files read whole with their digest, files written whole, text being made, numbers
+ * and days. The goal of this code: a file is read once and nothing on disk is ever half written or lost. */
 #include "core/document/document.h"
 
 #include "core/digest/blake2b.h"
@@ -14,8 +14,9 @@
 
 enum { FILE_SIZE_MAX = 256 << 20 };
 
-static const char *const formats[DOCUMENT_KINDS] = {"pulsewright-profile-1", "pulsewright-demand-1",     "pulsewright-stimulator-1", "pulsewright-hookup-1",
-                                                    "pulsewright-train-1",   "pulsewright-recordings-1", "pulsewright-plan-1"};
+static const char *const formats[DOCUMENT_KINDS] = {
+    "pulsewright-profile-1", "pulsewright-demand-1",     "pulsewright-stimulator-1", "pulsewright-hookup-1",
+    "pulsewright-train-1",   "pulsewright-recordings-1", "pulsewright-plan-1"};
 
 const char *document_kind_format(enum document_kind kind)
 {
@@ -47,24 +48,31 @@ long date_days(struct date date)
     static const int before[12] = {0, 31, 59, 90, 120, 151, 181, 212, 243, 273, 304, 334};
     const long years = date.year - 1;
     const long leaps = years / 4 - years / 100 + years / 400;
-    return years * 365 + leaps + before[date.month - 1] + (date.month > 2 && leap(date.year) ? 1 : 0) + date.day - 1 - 719162;
+    return years * 365 + leaps + before[date.month - 1] + (date.month > 2 && leap(date.year) ? 1 : 0) +
+           date.day - 1 - 719162;
 }
 
 static enum status read_descriptor(int file, struct document_bytes *bytes, struct message *why)
 {
     struct stat about;
-    if (fstat(file, &about) != 0 || S_ISDIR(about.st_mode)) return status_fail(why, STATUS_DOCUMENT, "%s: is no file", bytes->path);
+    if (fstat(file, &about) != 0 || S_ISDIR(about.st_mode))
+        return status_fail(why, STATUS_DOCUMENT, "%s: is no file", bytes->path);
     size_t capacity = about.st_size > 0 ? (size_t)about.st_size + 1 : 65536;
-    if (capacity > FILE_SIZE_MAX) return status_fail(why, STATUS_DOCUMENT, "%s: holds more than %d MiB", bytes->path, FILE_SIZE_MAX >> 20);
+    if (capacity > FILE_SIZE_MAX)
+        return status_fail(why, STATUS_DOCUMENT, "%s: holds more than %d MiB", bytes->path,
+                           FILE_SIZE_MAX >> 20);
     bytes->data = malloc(capacity + 1);
     while (bytes->data) {
         const ssize_t got = read(file, bytes->data + bytes->size, capacity - bytes->size);
         if (got == 0) return STATUS_OK;
         if (got < 0 && errno == EINTR) continue;
-        if (got < 0) return status_fail(why, STATUS_DOCUMENT, "%s: can not be read: %s", bytes->path, strerror(errno));
+        if (got < 0)
+            return status_fail(why, STATUS_DOCUMENT, "%s: can not be read: %s", bytes->path, strerror(errno));
         bytes->size += (size_t)got;
         if (bytes->size < capacity) continue;
-        if (capacity >= FILE_SIZE_MAX) return status_fail(why, STATUS_DOCUMENT, "%s: holds more than %d MiB", bytes->path, FILE_SIZE_MAX >> 20);
+        if (capacity >= FILE_SIZE_MAX)
+            return status_fail(why, STATUS_DOCUMENT, "%s: holds more than %d MiB", bytes->path,
+                               FILE_SIZE_MAX >> 20);
         capacity *= 2;
         char *grown = realloc(bytes->data, capacity + 1);
         if (!grown) break;
@@ -76,10 +84,12 @@ static enum status read_descriptor(int file, struct document_bytes *bytes, struc
 enum status document_read_bytes(const char *path, struct document_bytes *bytes, struct message *why)
 {
     *bytes = (struct document_bytes){0};
-    if (strlen(path) >= sizeof bytes->path) return status_fail(why, STATUS_DOCUMENT, "%.80s..: is too long a path", path);
+    if (strlen(path) >= sizeof bytes->path)
+        return status_fail(why, STATUS_DOCUMENT, "%.80s..: is too long a path", path);
     (void)snprintf(bytes->path, sizeof bytes->path, "%s", path);
     const int file = open(path, O_RDONLY | O_CLOEXEC);
-    if (file < 0) return status_fail(why, STATUS_DOCUMENT, "%s: can not be opened: %s", path, strerror(errno));
+    if (file < 0)
+        return status_fail(why, STATUS_DOCUMENT, "%s: can not be opened: %s", path, strerror(errno));
     const enum status status = read_descriptor(file, bytes, why);
     (void)close(file);
     if (status != STATUS_OK) {
@@ -99,7 +109,8 @@ void document_bytes_free(struct document_bytes *bytes)
 }
 
 /* Looks at the first line that is neither empty nor a comment nor `---`. */
-enum status document_kind_of(const struct document_bytes *bytes, enum document_kind *kind, struct message *why)
+enum status document_kind_of(const struct document_bytes *bytes, enum document_kind *kind,
+                             struct message *why)
 {
     int line = 1;
     for (const char *c = bytes->data; c && *c; line++) {
@@ -109,7 +120,8 @@ enum status document_kind_of(const struct document_bytes *bytes, enum document_k
             c += 3;
             length -= 3;
         }
-        if (length == 0 || c[0] == '#' || c[0] == '\r' || c[0] == '%' || (length >= 3 && memcmp(c, "---", 3) == 0)) {
+        if (length == 0 || c[0] == '#' || c[0] == '\r' || c[0] == '%' ||
+            (length >= 3 && memcmp(c, "---", 3) == 0)) {
             c = end ? end + 1 : NULL;
             continue;
         }
@@ -121,10 +133,15 @@ enum status document_kind_of(const struct document_bytes *bytes, enum document_k
             *kind = (enum document_kind)k;
             return STATUS_OK;
         }
-        return status_fail(why, STATUS_DOCUMENT, "%s:%d:1: format: holds %.*s, may hold format: pulsewright-KIND-1, KIND one of profile, demand, "
-                           "stimulator, hookup, train, recordings, plan", bytes->path, line, (int)(length > 60 ? 60 : length), c);
+        return status_fail(
+            why, STATUS_DOCUMENT,
+            "%s:%d:1: format: holds %.*s, may hold format: pulsewright-KIND-1, KIND one of profile, demand, "
+            "stimulator, hookup, train, recordings, plan",
+            bytes->path, line, (int)(length > 60 ? 60 : length), c);
     }
-    return status_fail(why, STATUS_DOCUMENT, "%s:1:1: format: is absent, the first line may hold format: pulsewright-KIND-1", bytes->path);
+    return status_fail(why, STATUS_DOCUMENT,
+                       "%s:1:1: format: is absent, the first line may hold format: pulsewright-KIND-1",
+                       bytes->path);
 }
 
 static bool write_all(int file, const char *data, size_t size)
@@ -154,19 +171,26 @@ static void sync_folder(const char *path)
     (void)close(file);
 }
 
-enum status document_write_file(const char *path, const void *data, size_t size, bool replace, struct message *why)
+enum status document_write_file(const char *path, const void *data, size_t size, bool replace,
+                                struct message *why)
 {
     char temporary[PATH_SIZE + 32], old[PATH_SIZE + 4];
     struct stat about;
-    if (strlen(path) == 0 || strlen(path) >= PATH_SIZE) return status_fail(why, STATUS_USAGE, "\"%.80s\" is no usable path", path);
+    if (strlen(path) == 0 || strlen(path) >= PATH_SIZE)
+        return status_fail(why, STATUS_USAGE, "\"%.80s\" is no usable path", path);
     const bool exists = lstat(path, &about) == 0;
-    if (exists && !S_ISREG(about.st_mode) && !S_ISLNK(about.st_mode)) { /* a pipe or a device: written as it is */
+    if (exists && !S_ISREG(about.st_mode) &&
+        !S_ISLNK(about.st_mode)) { /* a pipe or a device: written as it is */
         const int sink = open(path, O_WRONLY | O_CLOEXEC);
         const bool done = sink >= 0 && write_all(sink, data, size);
         if (sink >= 0) (void)close(sink);
-        return done ? STATUS_OK : status_fail(why, STATUS_USAGE, "%s: can not be written: %s", path, strerror(errno));
+        return done ? STATUS_OK
+                    : status_fail(why, STATUS_USAGE, "%s: can not be written: %s", path, strerror(errno));
     }
-    if (exists && !replace) return status_fail(why, STATUS_USAGE, "%s is there already; --replace writes anew and keeps the old one as %s.1", path, path);
+    if (exists && !replace)
+        return status_fail(why, STATUS_USAGE,
+                           "%s is there already; --replace writes anew and keeps the old one as %s.1", path,
+                           path);
     (void)snprintf(temporary, sizeof temporary, "%s.new-%ld", path, (long)getpid());
     const int file = open(temporary, O_WRONLY | O_CREAT | O_EXCL | O_CLOEXEC, 0644);
     if (file < 0) return status_fail(why, STATUS_USAGE, "%s: can not be written: %s", path, strerror(errno));
@@ -189,22 +213,26 @@ enum status document_write_file(const char *path, const void *data, size_t size,
     return STATUS_OK;
 }
 
+/* A text of a few kilobytes: where there is no memory for it nothing sensible is left to do, so it ends
+ * loudly. */
 void text_out_print(struct text_out *out, const char *format, ...)
 {
-    va_list list, again;
+    char *made = NULL;
+    va_list list;
     va_start(list, format);
-    va_copy(again, list);
-    const int length = vsnprintf(NULL, 0, format, list);
+    const int length = vasprintf(&made, format, list);
     va_end(list);
-    if (length > 0 && out->size + (size_t)length + 1 > out->capacity) {
-        const size_t capacity = 2 * (out->size + (size_t)length + 1) + 256;
-        char *grown = realloc(out->data, capacity);
-        if (!grown) abort(); /* a text of a few kilobytes: nothing sensible is left to do */
+    if (length < 0) abort();
+    const size_t needed = out->size + (size_t)length + 1;
+    if (needed > out->capacity) {
+        char *grown = realloc(out->data, 2 * needed + 256);
+        if (!grown) abort();
         out->data = grown;
-        out->capacity = capacity;
+        out->capacity = 2 * needed + 256;
     }
-    if (length > 0) out->size += (size_t)vsnprintf(out->data + out->size, out->capacity - out->size, format, again);
-    va_end(again);
+    memcpy(out->data + out->size, made, (size_t)length + 1);
+    out->size += (size_t)length;
+    free(made);
 }
 
 void text_out_free(struct text_out *out)
@@ -215,10 +243,12 @@ void text_out_free(struct text_out *out)
 
 char *number_text(double value, char buffer[32])
 {
+    char text[32] = "";
     for (int digits = 1; digits <= 17; digits++) {
-        (void)snprintf(buffer, 32, "%.*g", digits, value);
-        const double back = strtod(buffer, NULL);
+        (void)snprintf(text, sizeof text, "%.*g", digits, value);
+        const double back = strtod(text, NULL);
         if (!(back < value) && !(back > value)) break;
     }
+    memcpy(buffer, text, sizeof text);
     return buffer;
 }

@@ -13,12 +13,14 @@ static const struct field channel_fields[] = {
     NUMBER_ABOVE(HC, pad_cm2, "pad_cm2", 0, 2000, "area of the pad, cm2"),
     NUMBER_ABOVE(HC, return_pad_cm2, "return_pad_cm2", 0, 2000, "area of the return pad, cm2"),
     LAST};
-static const struct schema channel_schema = {.name = "a channel", .size = sizeof(HC), .flow = true, .fields = channel_fields};
+static const struct schema channel_schema = {
+    .name = "a channel", .size = sizeof(HC), .flow = true, .fields = channel_fields};
 
-static const struct field hookup_fields[] = {
-    CODE_NEEDED(struct hookup, person, "person", "a code, no name"),
-    ARRAY_NEEDED(struct hookup, channel, channels, "channels", &channel_schema, 1, STIMULATOR_CHANNELS_MAX, "what each channel drives"),
-    LAST};
+static const struct field hookup_fields[] = {CODE_NEEDED(struct hookup, person, "person", "a code, no name"),
+                                             ARRAY_NEEDED(struct hookup, channel, channels, "channels",
+                                                          &channel_schema, 1, STIMULATOR_CHANNELS_MAX,
+                                                          "what each channel drives"),
+                                             LAST};
 
 static enum status check_hookup(struct reading *reading, const char *path, void *object)
 {
@@ -29,11 +31,13 @@ static enum status check_hookup(struct reading *reading, const char *path, void 
         for (size_t j = 0; j < i; j++) {
             if (hookup->channel[i].channel != hookup->channel[j].channel) continue;
             (void)snprintf(key, sizeof key, "channels[%zu].channel", i);
-            return schema_fault(reading, key, "holds channel %u a second time, each may stand once", hookup->channel[i].channel);
+            return schema_fault(reading, key, "holds channel %u a second time, each may stand once",
+                                hookup->channel[i].channel);
         }
     return STATUS_OK;
 }
-static const struct schema hookup_schema = {.name = "a hookup", .size = sizeof(struct hookup), .fields = hookup_fields, .check = check_hookup};
+static const struct schema hookup_schema = {
+    .name = "a hookup", .size = sizeof(struct hookup), .fields = hookup_fields, .check = check_hookup};
 
 enum status hookup_parse(const struct document_bytes *bytes, struct hookup *hookup, struct message *why)
 {

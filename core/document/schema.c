@@ -1,5 +1,6 @@
-/* Reading by schema. The goal of this code: one table says what a document may hold; a fault is told by place, key, what it holds and
- * what it may hold; nothing is half loaded. YAML 1.2 by libfyaml, used without aliases and tags; numbers are strict decimals. */
+/* Reading by schema. The goal of this code: one table says what a document may hold; a fault is told by
+ * place, key, what it holds and what it may hold; nothing is half loaded. YAML 1.2 by libfyaml, used without
+ * aliases and tags; numbers are strict decimals. */
 #include "core/document/schema.h"
 
 #include <libfyaml.h>
@@ -107,8 +108,8 @@ enum status schema_fault(struct reading *reading, const char *path, const char *
     va_end(list);
     for (char *c = text; *c; c++)
         if (*c == '\n' || *c == '\r') *c = ' ';
-    return status_fail(reading->why, STATUS_DOCUMENT, "%s:%d:%d: %s: %s", reading->bytes->path, place ? place->line : 1,
-                       place ? place->column : 1, path[0] ? path : "document", text);
+    return status_fail(reading->why, STATUS_DOCUMENT, "%s:%d:%d: %s: %s", reading->bytes->path,
+                       place ? place->line : 1, place ? place->column : 1, path[0] ? path : "document", text);
 }
 
 bool number_read(const char *text, size_t length, double *value)
@@ -149,7 +150,8 @@ static const char *holds(struct fy_node *node, char buffer[96])
     else if (!text || length == 0)
         (void)snprintf(buffer, 96, "holds nothing");
     else
-        (void)snprintf(buffer, 96, "holds %.*s%s", (int)(length > 60 ? 60 : length), text, length > 60 ? ".." : "");
+        (void)snprintf(buffer, 96, "holds %.*s%s", (int)(length > 60 ? 60 : length), text,
+                       length > 60 ? ".." : "");
     return buffer;
 }
 
@@ -169,21 +171,23 @@ static const char *number_range(double least, double most, bool above_least, cha
 
 static bool plain_scalar(struct fy_node *node, const char **text, size_t *length)
 {
-    if (!fy_node_is_scalar(node) || fy_node_is_alias(node) || fy_node_get_style(node) != FYNS_PLAIN) return false;
+    if (!fy_node_is_scalar(node) || fy_node_is_alias(node) || fy_node_get_style(node) != FYNS_PLAIN)
+        return false;
     *text = fy_node_get_scalar(node, length);
     return *text != NULL;
 }
 
-enum status schema_read_number(struct reading *reading, struct fy_node *node, const char *path, double least, double most, bool above_least,
-                               double *value)
+enum status schema_read_number(struct reading *reading, struct fy_node *node, const char *path, double least,
+                               double most, bool above_least, double *value)
 {
     char held[96], range[96];
     const char *text = NULL;
     size_t length = 0;
     double read = 0;
-    if (!plain_scalar(node, &text, &length) || !number_read(text, length, &read) || read < least || read > most ||
-        (above_least && !(read > least)))
-        return schema_fault(reading, path, "%s, may hold a number %s", holds(node, held), number_range(least, most, above_least, range));
+    if (!plain_scalar(node, &text, &length) || !number_read(text, length, &read) || read < least ||
+        read > most || (above_least && !(read > least)))
+        return schema_fault(reading, path, "%s, may hold a number %s", holds(node, held),
+                            number_range(least, most, above_least, range));
     *value = read;
     return STATUS_OK;
 }
@@ -193,7 +197,11 @@ static bool readable(const char *text, size_t length)
 {
     for (size_t i = 0; i < length;) {
         const unsigned char c = (unsigned char)text[i];
-        const size_t more = c < 0x80 ? 0 : c >= 0xC2 && c < 0xE0 ? 1 : c >= 0xE0 && c < 0xF0 ? 2 : c >= 0xF0 && c < 0xF5 ? 3 : 9;
+        const size_t more = c < 0x80                ? 0
+                            : c >= 0xC2 && c < 0xE0 ? 1
+                            : c >= 0xE0 && c < 0xF0 ? 2
+                            : c >= 0xF0 && c < 0xF5 ? 3
+                                                    : 9;
         if (c < 0x20 || c == 0x7F || more == 9 || i + more >= length + (more == 0)) return false;
         for (size_t k = 1; k <= more; k++)
             if (((unsigned char)text[i + k] & 0xC0) != 0x80) return false;
@@ -203,36 +211,46 @@ static bool readable(const char *text, size_t length)
     return true;
 }
 
-enum status schema_read_text(struct reading *reading, struct fy_node *node, const char *path, char *text, size_t size)
+enum status schema_read_text(struct reading *reading, struct fy_node *node, const char *path, char *text,
+                             size_t size)
 {
     char held[96];
     size_t length = 0;
-    const char *scalar = fy_node_is_scalar(node) && !fy_node_is_alias(node) ? fy_node_get_scalar(node, &length) : NULL;
+    const char *scalar =
+        fy_node_is_scalar(node) && !fy_node_is_alias(node) ? fy_node_get_scalar(node, &length) : NULL;
     if (!scalar || length == 0 || length >= size || memchr(scalar, '\0', length) || !readable(scalar, length))
-        return schema_fault(reading, path, "%s, may hold a line of 1 to %zu characters", holds(node, held), size - 1);
+        return schema_fault(reading, path, "%s, may hold a line of 1 to %zu characters", holds(node, held),
+                            size - 1);
     memcpy(text, scalar, length);
     text[length] = '\0';
     return STATUS_OK;
 }
 
-static enum status read_code(struct reading *reading, struct fy_node *node, const char *path, char *text, size_t size)
+static enum status read_code(struct reading *reading, struct fy_node *node, const char *path, char *text,
+                             size_t size)
 {
     const enum status status = schema_read_text(reading, node, path, text, size);
     if (status != STATUS_OK) return status;
     for (const char *c = text; *c; c++) {
         const bool letter = (*c >= 'a' && *c <= 'z') || (*c >= 'A' && *c <= 'Z') || (*c >= '0' && *c <= '9');
         if (letter || (c > text && (*c == '-' || *c == '_' || *c == '.'))) continue;
-        return schema_fault(reading, path, "holds %s, may hold a code of letters, digits and dashes, no name of a person", text);
+        return schema_fault(reading, path,
+                            "holds %s, may hold a code of letters, digits and dashes, no name of a person",
+                            text);
     }
     return STATUS_OK;
 }
 
-static enum status read_choice(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, int *choice)
+static enum status read_choice(struct reading *reading, struct fy_node *node, const char *path,
+                               const struct field *field, int *choice)
 {
     size_t length = 0;
-    const char *text = fy_node_is_scalar(node) && !fy_node_is_alias(node) ? fy_node_get_scalar(node, &length) : NULL;
+    const char *text =
+        fy_node_is_scalar(node) && !fy_node_is_alias(node) ? fy_node_get_scalar(node, &length) : NULL;
     for (int i = 0; text && field->choices[i]; i++) {
-        if (length == 0 || strlen(field->choices[i]) != length || memcmp(field->choices[i], text, length) != 0) continue;
+        if (length == 0 || strlen(field->choices[i]) != length ||
+            memcmp(field->choices[i], text, length) != 0)
+            continue;
         *choice = i;
         return STATUS_OK;
     }
@@ -244,7 +262,8 @@ static enum status read_choice(struct reading *reading, struct fy_node *node, co
     return schema_fault(reading, path, "%s, may hold %s", holds(node, held), may);
 }
 
-static enum status read_choices(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, void *object)
+static enum status read_choices(struct reading *reading, struct fy_node *node, const char *path,
+                                const struct field *field, void *object)
 {
     char held[96], item_path[PATH_TEXT];
     if (!fy_node_is_sequence(node) || fy_node_sequence_item_count(node) < 1)
@@ -259,7 +278,9 @@ static enum status read_choices(struct reading *reading, struct fy_node *node, c
         schema_note(reading, item_path, item);
         const enum status status = read_choice(reading, item, item_path, field, &choice);
         if (status != STATUS_OK) return status;
-        if (bits & 1u << choice) return schema_fault(reading, item_path, "holds %s a second time, may hold it once", field->choices[choice]);
+        if (bits & 1u << choice)
+            return schema_fault(reading, item_path, "holds %s a second time, may hold it once",
+                                field->choices[choice]);
         bits |= 1u << choice;
     }
     if (field->type == FIELD_BITS) {
@@ -271,15 +292,21 @@ static enum status read_choices(struct reading *reading, struct fy_node *node, c
     return STATUS_OK;
 }
 
-static enum status read_map(struct reading *reading, struct fy_node *node, const char *path, const struct schema *schema, void *object);
+static enum status read_map(struct reading *reading, struct fy_node *node, const char *path,
+                            const struct schema *schema, void *object);
 
-static enum status read_list(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, void *object)
+static enum status read_list(struct reading *reading, struct fy_node *node, const char *path,
+                             const struct field *field, void *object)
 {
     char held[96], item_path[PATH_TEXT];
     const int items = fy_node_is_sequence(node) ? fy_node_sequence_item_count(node) : -1;
     if (items < 0 || items < field->least || items > field->most)
-        return schema_fault(reading, path, "%s%s, may hold a list of %g to %g", items < 0 ? holds(node, held) : "holds a list",
-                            items < 0 ? "" : items == 0 ? " of none" : " of another length", field->least, field->most);
+        return schema_fault(reading, path, "%s%s, may hold a list of %g to %g",
+                            items < 0 ? holds(node, held) : "holds a list",
+                            items < 0    ? ""
+                            : items == 0 ? " of none"
+                                         : " of another length",
+                            field->least, field->most);
     const size_t size = field->type == FIELD_NUMBERS ? sizeof(double) : field->of->size;
     char *element = field->type == FIELD_ARRAY ? at(object, field->offset) : calloc((size_t)items + 1, size);
     if (!element) return status_fail(reading->why, STATUS_INTERNAL, "no memory for %s", path);
@@ -293,17 +320,20 @@ static enum status read_list(struct reading *reading, struct fy_node *node, cons
         *count = (size_t)i + 1; /* what stands is freed, also on failure */
         const enum status status =
             field->type == FIELD_NUMBERS
-                ? schema_read_number(reading, item, item_path, field->of ? 0 : -HUGE_VAL, HUGE_VAL, false, (double *)(void *)(element + (size_t)i * size))
+                ? schema_read_number(reading, item, item_path, field->of ? 0 : -HUGE_VAL, HUGE_VAL, false,
+                                     (double *)(void *)(element + (size_t)i * size))
                 : read_map(reading, item, item_path, field->of, element + (size_t)i * size);
         if (status != STATUS_OK) return status;
     }
     return STATUS_OK;
 }
 
-static enum status read_fixed(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, void *object)
+static enum status read_fixed(struct reading *reading, struct fy_node *node, const char *path,
+                              const struct field *field, void *object)
 {
     double number = 0;
-    const enum status status = schema_read_number(reading, node, path, field->least, field->most, field->above_least, &number);
+    const enum status status =
+        schema_read_number(reading, node, path, field->least, field->most, field->above_least, &number);
     if (status != STATUS_OK) return status;
     const double scaled = number * field->scale, whole = round(scaled);
     char held[96];
@@ -316,26 +346,40 @@ static enum status read_fixed(struct reading *reading, struct fy_node *node, con
     return STATUS_OK;
 }
 
-static enum status read_range(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, double *ends)
+static enum status read_range(struct reading *reading, struct fy_node *node, const char *path,
+                              const struct field *field, double *ends)
 {
     if (!fy_node_is_mapping(node)) {
-        const enum status status = schema_read_number(reading, node, path, field->least, field->most, field->above_least, &ends[0]);
+        const enum status status =
+            schema_read_number(reading, node, path, field->least, field->most, field->above_least, &ends[0]);
         ends[1] = ends[0];
         return status;
     }
-    const struct field of[] = {
-        {.key = "from", .type = FIELD_NUMBER, .offset = 0, .least = field->least, .most = field->most, .above_least = field->above_least, .required = true},
-        {.key = "to", .type = FIELD_NUMBER, .offset = sizeof(double), .least = field->least, .most = field->most, .above_least = field->above_least,
-         .required = true},
-        {0}};
+    const struct field of[] = {{.key = "from",
+                                .type = FIELD_NUMBER,
+                                .offset = 0,
+                                .least = field->least,
+                                .most = field->most,
+                                .above_least = field->above_least,
+                                .required = true},
+                               {.key = "to",
+                                .type = FIELD_NUMBER,
+                                .offset = sizeof(double),
+                                .least = field->least,
+                                .most = field->most,
+                                .above_least = field->above_least,
+                                .required = true},
+                               {0}};
     const struct schema range = {.name = "a range", .size = 2 * sizeof(double), .fields = of};
     const enum status status = read_map(reading, node, path, &range, ends);
     if (status != STATUS_OK) return status;
-    if (ends[0] > ends[1]) return schema_fault(reading, path, "holds from %g to %g, may hold from at most to", ends[0], ends[1]);
+    if (ends[0] > ends[1])
+        return schema_fault(reading, path, "holds from %g to %g, may hold from at most to", ends[0], ends[1]);
     return STATUS_OK;
 }
 
-static enum status read_date(struct reading *reading, struct fy_node *node, const char *path, struct date *date)
+static enum status read_date(struct reading *reading, struct fy_node *node, const char *path,
+                             struct date *date)
 {
     char held[96], text[16];
     size_t length = 0;
@@ -348,26 +392,30 @@ static enum status read_date(struct reading *reading, struct fy_node *node, cons
     return schema_fault(reading, path, "%s, may hold a day YYYY-MM-DD", holds(node, held));
 }
 
-static enum status read_count(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, unsigned *count)
+static enum status read_count(struct reading *reading, struct fy_node *node, const char *path,
+                              const struct field *field, unsigned *count)
 {
     double number = 0;
     char held[96];
     const char *text = NULL;
     size_t length = 0;
-    if (!plain_scalar(node, &text, &length) || !number_read(text, length, &number) || number < field->least || number > field->most ||
-        fabs(number - round(number)) > 0)
-        return schema_fault(reading, path, "%s, may hold a whole number from %.0f to %.0f", holds(node, held), field->least, field->most);
+    if (!plain_scalar(node, &text, &length) || !number_read(text, length, &number) || number < field->least ||
+        number > field->most || fabs(number - round(number)) > 0)
+        return schema_fault(reading, path, "%s, may hold a whole number from %.0f to %.0f", holds(node, held),
+                            field->least, field->most);
     *count = (unsigned)number;
     return STATUS_OK;
 }
 
-static enum status read_field(struct reading *reading, struct fy_node *node, const char *path, const struct field *field, void *object)
+static enum status read_field(struct reading *reading, struct fy_node *node, const char *path,
+                              const struct field *field, void *object)
 {
     void *target = at(object, field->offset);
     int choice = 0;
     enum status status;
     switch (field->type) {
-    case FIELD_NUMBER: return schema_read_number(reading, node, path, field->least, field->most, field->above_least, target);
+    case FIELD_NUMBER:
+        return schema_read_number(reading, node, path, field->least, field->most, field->above_least, target);
     case FIELD_COUNT: return read_count(reading, node, path, field, target);
     case FIELD_FIXED:
     case FIELD_FIXED64: return read_fixed(reading, node, path, field, object);
@@ -412,7 +460,8 @@ static void set_absent(const struct schema *schema, void *object)
         } else if (field->type == FIELD_BITS) {
             *(unsigned *)target = (unsigned)field->fallback;
         } else if (field->type == FIELD_CHOICES) {
-            for (int i = 0; field->choices[i]; i++) ((bool *)target)[i] = ((unsigned)field->fallback & 1u << i) != 0;
+            for (int i = 0; field->choices[i]; i++)
+                ((bool *)target)[i] = ((unsigned)field->fallback & 1u << i) != 0;
         } else if (field->type == FIELD_MAP) {
             set_absent(field->of, target);
         }
@@ -439,8 +488,8 @@ static enum status unknown_key(struct reading *reading, const struct schema *sch
 
 #define FORMAT_SEEN ((uint64_t)1 << 63) /* no kind has as many keys */
 
-static enum status read_pair(struct reading *reading, struct fy_node_pair *pair, const char *path, const struct schema *schema, void *object,
-                             uint64_t *seen)
+static enum status read_pair(struct reading *reading, struct fy_node_pair *pair, const char *path,
+                             const struct schema *schema, void *object, uint64_t *seen)
 {
     struct fy_node *key = fy_node_pair_key(pair), *value = fy_node_pair_value(pair);
     char key_path[PATH_TEXT], text[64];
@@ -448,12 +497,14 @@ static enum status read_pair(struct reading *reading, struct fy_node_pair *pair,
     const char *name = key && fy_node_is_scalar(key) ? fy_node_get_scalar(key, &length) : NULL;
     if (!name || length == 0 || length >= sizeof text || !readable(name, length)) {
         schema_note(reading, path, key);
-        return schema_fault(reading, path, "holds a key that is no word, may hold the keys of %s", schema->name);
+        return schema_fault(reading, path, "holds a key that is no word, may hold the keys of %s",
+                            schema->name);
     }
     memcpy(text, name, length);
     text[length] = '\0';
     (void)snprintf(key_path, sizeof key_path, "%.180s%s%s", path, path[0] ? "." : "", text);
-    if (path[0] == '\0' && strcmp(text, "format") == 0 && !(*seen & FORMAT_SEEN)) { /* read_root has read it */
+    if (path[0] == '\0' && strcmp(text, "format") == 0 &&
+        !(*seen & FORMAT_SEEN)) { /* read_root has read it */
         *seen |= FORMAT_SEEN;
         return STATUS_OK;
     }
@@ -462,22 +513,27 @@ static enum status read_pair(struct reading *reading, struct fy_node_pair *pair,
     const int first_line = before ? before->line : 0;
     if (!field && path[0] == '\0' && strcmp(text, "format") == 0) {
         schema_note(reading, key_path, key);
-        return schema_fault(reading, key_path, "stands a second time (first in line %d), may stand once", first_line);
+        return schema_fault(reading, key_path, "stands a second time (first in line %d), may stand once",
+                            first_line);
     }
     if (!field || *seen & (uint64_t)1 << (field - schema->fields)) {
         schema_note(reading, key_path, key);
         if (!field) return unknown_key(reading, schema, key_path);
-        return schema_fault(reading, key_path, "stands a second time (first in line %d), may stand once", first_line);
+        return schema_fault(reading, key_path, "stands a second time (first in line %d), may stand once",
+                            first_line);
     }
     *seen |= (uint64_t)1 << (field - schema->fields);
     schema_note(reading, key_path, value && first_token(value) ? value : key);
-    if (!value) return schema_fault(reading, key_path, "holds nothing, may hold %s", field->help ? field->help : "a value");
+    if (!value)
+        return schema_fault(reading, key_path, "holds nothing, may hold %s",
+                            field->help ? field->help : "a value");
     if (fy_node_is_alias(value) || fy_node_get_tag(value, &length))
         return schema_fault(reading, key_path, "holds an alias or a tag, may hold a plain value");
     return read_field(reading, value, key_path, field, object);
 }
 
-static enum status read_map(struct reading *reading, struct fy_node *node, const char *path, const struct schema *schema, void *object)
+static enum status read_map(struct reading *reading, struct fy_node *node, const char *path,
+                            const struct schema *schema, void *object)
 {
     char held[96], key_path[PATH_TEXT];
     set_absent(schema, object);
@@ -493,8 +549,8 @@ static enum status read_map(struct reading *reading, struct fy_node *node, const
     }
     for (const struct field *field = schema->fields; field->key; field++) {
         if (!field->required || seen & (uint64_t)1 << (field - schema->fields)) continue;
-        return schema_fault(reading, schema_path(path, field->key, key_path), "is absent, %s needs it: %s", schema->name,
-                            field->help ? field->help : "a value");
+        return schema_fault(reading, schema_path(path, field->key, key_path), "is absent, %s needs it: %s",
+                            schema->name, field->help ? field->help : "a value");
     }
     reading->depth--;
     return schema->check ? schema->check(reading, path, object) : STATUS_OK;
@@ -505,9 +561,13 @@ static enum status yaml_fault(struct reading *reading, struct fy_diag *diag)
 {
     void *previous = NULL;
     const struct fy_diag_error *error = fy_diag_errors_iterate(diag, &previous);
-    if (!error) return status_fail(reading->why, STATUS_DOCUMENT, "%s:1:1: document: is empty or no YAML, may hold a map of keys", reading->bytes->path);
-    return status_fail(reading->why, STATUS_DOCUMENT, "%s:%d:%d: document: is no valid YAML (%s)", reading->bytes->path,
-                       error->line > 0 ? error->line : 1, error->column > 0 ? error->column : 1, error->msg ? error->msg : "unknown");
+    if (!error)
+        return status_fail(reading->why, STATUS_DOCUMENT,
+                           "%s:1:1: document: is empty or no YAML, may hold a map of keys",
+                           reading->bytes->path);
+    return status_fail(reading->why, STATUS_DOCUMENT, "%s:%d:%d: document: is no valid YAML (%s)",
+                       reading->bytes->path, error->line > 0 ? error->line : 1,
+                       error->column > 0 ? error->column : 1, error->msg ? error->msg : "unknown");
 }
 
 static enum status second_document(struct reading *reading, struct fy_document *second)
@@ -522,11 +582,13 @@ struct envelope {
 };
 
 /* The format line comes first; then the kind's own keys. */
-static enum status read_root(struct reading *reading, struct fy_node *root, const struct envelope *envelope, void *object)
+static enum status read_root(struct reading *reading, struct fy_node *root, const struct envelope *envelope,
+                             void *object)
 {
     if (!root || !fy_node_is_mapping(root))
-        return status_fail(reading->why, STATUS_DOCUMENT, "%s:1:1: document: is no map, may hold keys, the first format: %s", reading->bytes->path,
-                           envelope->format);
+        return status_fail(reading->why, STATUS_DOCUMENT,
+                           "%s:1:1: document: is no map, may hold keys, the first format: %s",
+                           reading->bytes->path, envelope->format);
     void *previous = NULL;
     struct fy_node_pair *first = fy_node_mapping_iterate(root, &previous);
     size_t length = 0;
@@ -539,7 +601,8 @@ static enum status read_root(struct reading *reading, struct fy_node *root, cons
     if (value) schema_note(reading, "format", value);
     const char *text = value && fy_node_is_scalar(value) ? fy_node_get_scalar(value, &length) : NULL;
     if (!text || strlen(envelope->format) != length || memcmp(text, envelope->format, length) != 0)
-        return schema_fault(reading, "format", "%s, may hold %s", value ? holds(value, held) : "holds nothing", envelope->format);
+        return schema_fault(reading, "format", "%s, may hold %s",
+                            value ? holds(value, held) : "holds nothing", envelope->format);
     return read_map(reading, root, "", envelope->schema, object);
 }
 
@@ -553,7 +616,8 @@ void schema_free(const struct schema *schema, void *object)
         char *element = target;
         if (field->type != FIELD_ARRAY) memcpy(&element, target, sizeof element);
         size_t *count = at(object, field->count);
-        for (size_t i = 0; element && field->of && field->type != FIELD_NUMBERS && i < *count; i++) schema_free(field->of, element + i * field->of->size);
+        for (size_t i = 0; element && field->of && field->type != FIELD_NUMBERS && i < *count; i++)
+            schema_free(field->of, element + i * field->of->size);
         *count = 0;
         if (field->type == FIELD_ARRAY) continue;
         free(element);
@@ -562,7 +626,8 @@ void schema_free(const struct schema *schema, void *object)
     if (schema->free) schema->free(object);
 }
 
-enum status schema_parse(const struct schema *schema, const char *format, const struct document_bytes *bytes, void *object, struct message *why)
+enum status schema_parse(const struct schema *schema, const char *format, const struct document_bytes *bytes,
+                         void *object, struct message *why)
 {
     memset(object, 0, schema->size);
     struct reading reading = {.bytes = bytes, .why = why};
@@ -571,13 +636,14 @@ enum status schema_parse(const struct schema *schema, const char *format, const 
     struct fy_diag *diag = fy_diag_create(&diag_configuration);
     if (!diag) return status_fail(why, STATUS_INTERNAL, "%s: no memory", bytes->path);
     fy_diag_set_collect_errors(diag, true);
-    const struct fy_parse_cfg configuration = {.flags = FYPCF_QUIET | FYPCF_ALLOW_DUPLICATE_KEYS, .diag = diag};
+    const struct fy_parse_cfg configuration = {.flags = FYPCF_QUIET | FYPCF_ALLOW_DUPLICATE_KEYS,
+                                               .diag = diag};
     struct fy_parser *parser = fy_parser_create(&configuration);
     struct fy_document *document = NULL, *second = NULL;
     enum status status;
     if (bytes->size == 0 || memchr(bytes->data, '\0', bytes->size))
-        status = status_fail(why, STATUS_DOCUMENT, "%s:1:1: document: %s, may hold format: %s and its keys", bytes->path,
-                             bytes->size ? "holds a zero octet" : "is empty", format);
+        status = status_fail(why, STATUS_DOCUMENT, "%s:1:1: document: %s, may hold format: %s and its keys",
+                             bytes->path, bytes->size ? "holds a zero octet" : "is empty", format);
     else if (!parser || fy_parser_set_string(parser, bytes->data, bytes->size) != 0)
         status = status_fail(why, STATUS_INTERNAL, "%s: no memory", bytes->path);
     else if (!(document = fy_parse_load_document(parser)))

@@ -1,4 +1,5 @@
-/* Writing by schema. The goal of this code: what is written reads back as the same values, to the last bit, by the same table. */
+/* Writing by schema. The goal of this code: what is written reads back as the same values, to the last bit,
+ * by the same table. */
 #include "core/document/schema.h"
 
 #include <math.h>
@@ -14,10 +15,13 @@ static bool is_plain_safe(const char *text)
 {
     if (!((text[0] >= 'a' && text[0] <= 'z') || (text[0] >= 'A' && text[0] <= 'Z'))) return false;
     for (const char *c = text; *c; c++) {
-        const bool word = (*c >= 'a' && *c <= 'z') || (*c >= 'A' && *c <= 'Z') || (*c >= '0' && *c <= '9') || *c == '-' || *c == '_' || *c == '.' || *c == '/';
+        const bool word = (*c >= 'a' && *c <= 'z') || (*c >= 'A' && *c <= 'Z') || (*c >= '0' && *c <= '9') ||
+                          *c == '-' || *c == '_' || *c == '.' || *c == '/';
         if (!word && !(*c == ' ' && c[1] != '\0' && c[1] != ' ')) return false;
     }
-    static const char *const words[] = {"true", "false", "null", "yes", "no", "on", "off", "True", "False", "Null", "Yes", "No", "On", "Off", "y", "n", "Y", "N", NULL};
+    static const char *const words[] = {"true", "false", "null", "yes", "no", "on", "off",
+                                        "True", "False", "Null", "Yes", "No", "On", "Off",
+                                        "y",    "n",     "Y",    "N",   NULL};
     for (int i = 0; words[i]; i++)
         if (strcmp(words[i], text) == 0) return false;
     return true;
@@ -64,7 +68,8 @@ static bool is_there(const struct field *field, const void *object)
     }
 }
 
-static void print_map(const struct schema *schema, const void *object, struct text_out *out, int indent, bool flow);
+static void print_map(const struct schema *schema, const void *object, struct text_out *out, int indent,
+                      bool flow);
 
 static void print_choices(const struct field *field, const void *object, struct text_out *out)
 {
@@ -82,7 +87,8 @@ static void print_choices(const struct field *field, const void *object, struct 
     text_out_print(out, "]");
 }
 
-static void print_list(const struct field *field, const void *object, struct text_out *out, int indent, bool flow)
+static void print_list(const struct field *field, const void *object, struct text_out *out, int indent,
+                       bool flow)
 {
     const size_t count = *(const size_t *)at(object, field->count);
     const char *element = at(object, field->offset);
@@ -95,18 +101,21 @@ static void print_list(const struct field *field, const void *object, struct tex
         if (field->type == FIELD_NUMBERS)
             print_number(out, ((const double *)(const void *)element)[i]);
         else
-            print_map(field->of, element + i * field->of->size, out, indent + 2, inline_list || field->of->flow);
+            print_map(field->of, element + i * field->of->size, out, indent + 2,
+                      inline_list || field->of->flow);
     }
     if (inline_list) text_out_print(out, "]");
 }
 
 static void print_scaled(const struct field *field, const void *target, struct text_out *out)
 {
-    const double value = field->type == FIELD_FIXED ? (double)*(const uint32_t *)target : (double)*(const uint64_t *)target;
+    const double value =
+        field->type == FIELD_FIXED ? (double)*(const uint32_t *)target : (double)*(const uint64_t *)target;
     print_number(out, value / field->scale);
 }
 
-static void print_value(const struct field *field, const void *object, struct text_out *out, int indent, bool flow)
+static void print_value(const struct field *field, const void *object, struct text_out *out, int indent,
+                        bool flow)
 {
     const void *target = at(object, field->offset);
     const double *ends = target;
@@ -126,8 +135,8 @@ static void print_value(const struct field *field, const void *object, struct te
     case FIELD_CHOICES:
     case FIELD_BITS: print_choices(field, object, out); break;
     case FIELD_DATE:
-        text_out_print(out, "%04d-%02d-%02d", ((const struct date *)target)->year, ((const struct date *)target)->month,
-                       ((const struct date *)target)->day);
+        text_out_print(out, "%04d-%02d-%02d", ((const struct date *)target)->year,
+                       ((const struct date *)target)->month, ((const struct date *)target)->day);
         break;
     case FIELD_MAP: print_map(field->of, target, out, indent, flow || field->of->flow); break;
     case FIELD_LIST:
@@ -148,8 +157,10 @@ static void print_value(const struct field *field, const void *object, struct te
     }
 }
 
-/* In a block the first key follows what the caller wrote ("- " or a new line); at depth the map starts on a line of its own. */
-static void print_map(const struct schema *schema, const void *object, struct text_out *out, int indent, bool flow)
+/* In a block the first key follows what the caller wrote ("- " or a new line); at depth the map starts on a
+ * line of its own. */
+static void print_map(const struct schema *schema, const void *object, struct text_out *out, int indent,
+                      bool flow)
 {
     bool some = false;
     if (flow) text_out_print(out, "{");

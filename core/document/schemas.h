@@ -1,4 +1,5 @@
-/* The schemas that one kind of document lends another (a plan holds a stimulator, a demand, contractions). Private to core/document. */
+/* The schemas that one kind of document lends another (a plan holds a stimulator, a demand, contractions).
+ * Private to core/document. */
 #ifndef PULSEWRIGHT_CORE_DOCUMENT_SCHEMAS_H
 #define PULSEWRIGHT_CORE_DOCUMENT_SCHEMAS_H
 #include "core/document/schema.h"

@@ -15,7 +15,8 @@
 
 /* Reads, writes, frees: one row a kind. */
 #define ROUND(kind)                                                                                          \
-    static enum status round_##kind(const struct document_bytes *bytes, struct text_out *out, struct message *why)                             \
+    static enum status round_##kind(const struct document_bytes *bytes, struct text_out *out,                \
+                                    struct message *why)                                                     \
     {                                                                                                        \
         struct kind document;                                                                                \
         const enum status status = kind##_parse(bytes, &document, why);                                      \
@@ -24,13 +25,34 @@
         free_##kind(&document);                                                                              \
         return STATUS_OK;                                                                                    \
     }
-static void free_profile(struct profile *d) { profile_free(d); }
-static void free_demand(struct demand *d) { demand_free(d); }
-static void free_stimulator(struct stimulator *d) { (void)d; }
-static void free_hookup(struct hookup *d) { (void)d; }
-static void free_train(struct train *d) { train_free(d); }
-static void free_recordings(struct recordings *d) { recordings_free(d); }
-static void free_plan(struct plan *d) { plan_free(d); }
+static void free_profile(struct profile *d)
+{
+    profile_free(d);
+}
+static void free_demand(struct demand *d)
+{
+    demand_free(d);
+}
+static void free_stimulator(struct stimulator *d)
+{
+    (void)d;
+}
+static void free_hookup(struct hookup *d)
+{
+    (void)d;
+}
+static void free_train(struct train *d)
+{
+    train_free(d);
+}
+static void free_recordings(struct recordings *d)
+{
+    recordings_free(d);
+}
+static void free_plan(struct plan *d)
+{
+    plan_free(d);
+}
 ROUND(profile)
 ROUND(demand)
 ROUND(stimulator)
@@ -39,7 +61,8 @@ ROUND(train)
 ROUND(recordings)
 ROUND(plan)
 
-static enum status (*const rounds[DOCUMENT_KINDS])(const struct document_bytes *, struct text_out *, struct message *) = {
+static enum status (*const rounds[DOCUMENT_KINDS])(const struct document_bytes *, struct text_out *,
+                                                   struct message *) = {
     round_profile, round_demand, round_stimulator, round_hookup, round_train, round_recordings, round_plan};
 
 static void check_round(const struct document_bytes *bytes)
@@ -77,7 +100,8 @@ static void every_sample_reads_back_as_it_was_written(void **state)
 static void numbers_keep_their_last_bit(void **state)
 {
     (void)state;
-    static const double awkward[] = {0.1, 1.0 / 3, 2.2250738585072014e-308, 123456789.12345678, 4.0e-7, 1e300};
+    static const double awkward[] = {0.1,    1.0 / 3, 2.2250738585072014e-308, 123456789.12345678,
+                                     4.0e-7, 1e300};
     for (size_t i = 0; i < sizeof awkward / sizeof awkward[0]; i++) {
         char text[32];
         const double back = strtod(number_text(awkward[i], text), NULL);
@@ -89,9 +113,10 @@ static void numbers_keep_their_last_bit(void **state)
 static void a_fitted_profile_keeps_its_covariance(void **state)
 {
     (void)state;
-    static const char text[] = "format: pulsewright-profile-1\nperson: P-9\nmuscles:\n  - name: m\n    recruitment: {law: full}\n"
-                               "    uncertainty: {Km_rest: 0.1, tau1_rest_ms: 0.33333333333333331}\n"
-                               "    covariance: [[0.01, -0.0012345678901234567], [-0.0012345678901234567, 0.1]]\n";
+    static const char text[] =
+        "format: pulsewright-profile-1\nperson: P-9\nmuscles:\n  - name: m\n    recruitment: {law: full}\n"
+        "    uncertainty: {Km_rest: 0.1, tau1_rest_ms: 0.33333333333333331}\n"
+        "    covariance: [[0.01, -0.0012345678901234567], [-0.0012345678901234567, 0.1]]\n";
     struct document_bytes bytes = {.path = "p.yaml", .size = sizeof text - 1};
     char copy[sizeof text];
     memcpy(copy, text, sizeof text);
@@ -108,7 +133,8 @@ static void a_fitted_profile_keeps_its_covariance(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {cmocka_unit_test(every_sample_reads_back_as_it_was_written), cmocka_unit_test(numbers_keep_their_last_bit),
+    const struct CMUnitTest tests[] = {cmocka_unit_test(every_sample_reads_back_as_it_was_written),
+                                       cmocka_unit_test(numbers_keep_their_last_bit),
                                        cmocka_unit_test(a_fitted_profile_keeps_its_covariance)};
     return cmocka_run_group_tests(tests, NULL, NULL) != 0;
 }
