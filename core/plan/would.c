@@ -5,7 +5,22 @@
 
 #include <math.h>
 
-enum { TARGET_ROUNDS = 8, HOLD_ROUNDS = 8, HOLD_STEP_MS = 50 };
+enum { TARGET_ROUNDS = 6, HOLD_ROUNDS = 6, HOLD_STEP_MS = 50 };
+
+/* Is a changed demand met in full, with the space of settings as it is? */
+static enum status try_demand(struct maker *maker, const struct plan_options *options, bool *yes,
+                              struct message *why)
+{
+    const struct search_options search = {.quick = true,
+                                          .near = maker->found.policy,
+                                          .progress = options->progress,
+                                          .context = options->context};
+    struct search_result result = {0};
+    const enum status status =
+        search_policies(&maker->work, &maker->problem, maker->stimulator, &search, &result, why);
+    *yes = status == STATUS_OK && result.outcome.first_miss == 0;
+    return status;
+}
 
 /* Is a changed demand met in full? */
 static enum status works(struct maker *maker, const struct demand *demand, double target_n,
@@ -16,19 +31,24 @@ static enum status works(struct maker *maker, const struct demand *demand, doubl
     const double edge = maker->channel->force_edge_n, cap = maker->channel->force_cap_n;
     problem->demand = demand;
     problem->aim = contraction_aim_of(demand, target_n, cap);
-    problem->solve_target_n = target_n * fmin(1.0, kept.solve_target_n / kept.aim.target_n);
+    problem->solve_target_n = target_n;
     problem->contractions = problem->warm_up + demand->contractions;
     /* the upper edge lies above the middle by about as much as it did in the plan */
-    if (edge > 0.0 && kept.solve_target_n > 0.0 && isfinite(cap))
+    if (edge > 0.0 && isfinite(cap))
         problem->solve_target_n = fmin(target_n, cap * kept.solve_target_n / edge);
-    const struct search_options search = {.quick = true,
-                                          .near = maker->found.policy,
-                                          .progress = options->progress,
-                                          .context = options->context};
-    struct search_result result = {0};
-    const enum status status =
-        search_policies(&maker->work, problem, maker->stimulator, &search, &result, why);
-    *yes = status == STATUS_OK && result.outcome.first_miss == 0;
+    enum status status = try_demand(maker, options, yes, why);
+    if (status == STATUS_OK && !*yes && maker->whole.choose_cover) {
+        /* a current that is chosen once would be chosen lower for less force, and give finer steps */
+        const struct settings_space *space = &kept.space;
+        const double most =
+            settings_share(space, (double)settings_duration_to(space, space->strongest_ua, NULL),
+                           (double)space->strongest_ua);
+        problem->space = maker->whole;
+        settings_fix_current(
+            &problem->space,
+            settings_current_for(&maker->whole, 0.0, fmin(1.0, target_n / kept.aim.target_n) * most * 0.95));
+        status = try_demand(maker, options, yes, why);
+    }
     maker->problem = kept;
     return status;
 }
