@@ -4,7 +4,9 @@
 #include "core/report/option.h"
 
 /* X(name): command_NAME in NAME.c. The order is that of the work. */
-#define PULSEWRIGHT_COMMANDS(X)
+#define PULSEWRIGHT_COMMANDS(X) \
+    X(plan)                     \
+    X(recount)
 
 #define COMMAND_DECLARE(name) extern const struct command command_##name;
 PULSEWRIGHT_COMMANDS(COMMAND_DECLARE)

@@ -14,7 +14,8 @@
 const double solve_keep_share = 0.2;
 enum { ROUNDS = 8, POLISH_ROUNDS = 3, MEMORY = 32, CURRENT_TRIES = 5 };
 static const double quarter_middle = 0.125; /* of the hold: middle of its first quarter */
-static const double level_percent = 1.0;    /* quarters within this count as level */
+static const double level_percent =
+    2.0; /* quarters within this, and within two fifths of the droop allowed, count as level */
 static const double first_gain = 1.5; /* relative force for relative recruitment, before anything is known */
 static const double step_most = 0.7;  /* of a logarithm, in one round */
 
@@ -160,7 +161,7 @@ static double slope_percent(const struct hold_measures *hold)
 static double badness(const struct solver *solver, double mean_n, double droop_percent)
 {
     const struct contraction_aim *aim = solver->request->aim;
-    const double droop = fabs(droop_percent), level = fmin(level_percent, 0.5 * aim->droop_percent_max);
+    const double droop = fabs(droop_percent), level = fmin(level_percent, 0.4 * aim->droop_percent_max);
     return fabs(mean_n - aim->target_n) / aim->target_n + 0.01 * fmax(0.0, droop - level) +
            0.1 * fmax(0.0, droop - 0.95 * aim->droop_percent_max);
 }
@@ -392,7 +393,7 @@ static bool rail_spent(const struct solver *solver, const struct best *best)
     const struct contraction_aim *aim = solver->request->aim;
     const bool at_top = best->from == solver->rail.to || best->to == solver->rail.to;
     const bool level =
-        fabs(best->attempt.hold.droop_percent) <= fmin(level_percent, 0.5 * aim->droop_percent_max);
+        fabs(best->attempt.hold.droop_percent) <= fmin(level_percent, 0.4 * aim->droop_percent_max);
     return at_top && (best->attempt.hold.mean_n < aim->target_n * (1.0 - 1e-3) || !level);
 }
 
