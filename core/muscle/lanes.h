@@ -86,12 +86,15 @@ struct lanes_constants {
     double A_rest, Km_rest, tau1_rest, tau2, fatigue_rate, gain, rise_rate, decay_rate;
 };
 
-/* dy/dt of one row: y as enum lane_variable, C the activation now, drive = w L. One division: with D = K' + C
- * and E = tau1 D + tau2 C it is x = C/D = C E/(D E) and 1/(tau1 + tau2 x) = D/E = D D/(D E). */
+/* dy/dt of one row (LANE_P only where it potentiates; without, P is 1 for ever): y as enum lane_variable, C
+ * the activation now, drive = w L. One division: with D = K' + C and E = tau1 D + tau2 C it is x = C/D = C
+ * E/(D E) and 1/(tau1 + tau2 x) = D/E = D D/(D E). */
 LANES_INLINE void lanes_derive(lanes_t dy[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES], const lanes_t *C,
-                               const lanes_t *drive, const struct lanes_constants *constants)
+                               const lanes_t *drive, const struct lanes_constants *constants,
+                               bool potentiates)
 {
-    const lanes_t D = y[LANE_KM] * (1 + constants->gain * (1 - y[LANE_P])) + *C;
+    lanes_t D = y[LANE_KM] + *C;
+    if (potentiates) D = y[LANE_KM] * (1 + constants->gain * (1 - y[LANE_P])) + *C;
     const lanes_t E = y[LANE_TAU1] * D + constants->tau2 * *C;
     const lanes_t inverse = 1 / (D * E);
     const lanes_t x = *C * E * inverse;
@@ -104,7 +107,8 @@ LANES_INLINE void lanes_derive(lanes_t dy[LANE_VARIABLES], const lanes_t y[LANE_
     const lanes_t dtau1 =
         (constants->tau1_rest - y[LANE_TAU1]) * constants->fatigue_rate + constants->alpha_tau1 * y[LANE_PHI];
     lanes_lesser(&dy[LANE_TAU1], &dtau1, &constants->dtau1_most);
-    dy[LANE_P] = x * (1 - y[LANE_P]) * constants->rise_rate - y[LANE_P] * constants->decay_rate;
+    if (potentiates)
+        dy[LANE_P] = x * (1 - y[LANE_P]) * constants->rise_rate - y[LANE_P] * constants->decay_rate;
 }
 
 #endif

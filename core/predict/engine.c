@@ -14,7 +14,7 @@
 
 /* Local tolerances, found against CVODE over drawn parameters (tests/core/predict): default 1e-4 of peak and
  * 1e-5 of capacity overall, exact 1e-7 and 1e-8. */
-#define TOLERANCE_DEFAULT 2e-6
+#define TOLERANCE_DEFAULT 1e-6
 #define TOLERANCE_EXACT 2e-9
 /* Below this share of its scale a lane's force, and what its activation may still give, is taken as gone. */
 #define QUIET 1e-13
@@ -23,6 +23,12 @@
 /* Activation needs at least so many tau_c to get there. */
 #define QUIET_WAIT 25.0
 #define STEP_GROWTH_MOST 6.0
+/* While activation lives a step is at most so many of the shortest tau_c: a longer one could pass over x's
+ * fall without seeing it. */
+#define STEP_TAU_C_MOST 4.0
+/* First step after a pulse, of the time in which x changes by itself, at tolerance 1; the pair's order makes
+ * it a fifth root. */
+#define FIRST_SHARE 4.5
 
 enum { STAGES = 7 };
 
@@ -35,15 +41,24 @@ struct trial {
     double past;  /* above 0: a state may be beyond its bound */
 };
 
+void engine_tolerate(struct engine *engine, double tolerance)
+{
+    engine->tolerance = tolerance;
+    engine->first_share = FIRST_SHARE * pow(tolerance, 0.2);
+}
+
 void engine_init(struct engine *engine, const struct muscle *muscle, bool exact, const struct motion *motion)
 {
     memset(engine, 0, sizeof *engine);
     engine->muscle = *muscle;
     muscle_rest(&engine->muscle, &engine->state);
-    engine->tolerance = exact ? TOLERANCE_EXACT : TOLERANCE_DEFAULT;
+    engine_tolerate(engine, exact ? TOLERANCE_EXACT : TOLERANCE_DEFAULT);
     engine->motion = motion;
-    for (unsigned i = 0; i < engine->state.lanes; i++)
+    engine->step_most_ms = (double)INFINITY;
+    for (unsigned i = 0; i < engine->state.lanes; i++) {
         engine->quiet_wait_ms = fmax(engine->quiet_wait_ms, QUIET_WAIT * engine->state.tau_c[i]);
+        engine->step_most_ms = fmin(engine->step_most_ms, STEP_TAU_C_MOST * engine->state.tau_c[i]);
+    }
 }
 
 static double drive_factor(const struct engine *engine, double time_ms)
@@ -89,15 +104,16 @@ LANES_CLONES static double refresh(struct engine *engine, double factor)
 {
     const struct muscle_state *state = &engine->state;
     const lanes_t zero = {0};
+    const bool potentiates = engine->muscle.parameters.has_potentiation;
     lanes_t fastest = zero;
     for (unsigned at = 0; at < state->lanes; at += LANE_WIDTH) {
         struct lanes_constants constants;
-        lanes_t y[LANE_VARIABLES], dy[LANE_VARIABLES];
+        lanes_t y[LANE_VARIABLES], dy[LANE_VARIABLES] = {zero, zero, zero, zero, zero};
         load_constants(&constants, engine, at);
         load_state(y, state, at);
         const lanes_t w = *(const lanes_t *)&state->w[at], C = *(const lanes_t *)&state->C[at],
                       drive = w * factor;
-        lanes_derive(dy, y, &C, &drive, &constants);
+        lanes_derive(dy, y, &C, &drive, &constants, potentiates);
         for (int i = 0; i < LANE_VARIABLES; i++) *(lanes_t *)&engine->derivative[i][at] = dy[i];
         const lanes_t D = y[LANE_KM] * (1 + constants.gain * (1 - y[LANE_P])) + C;
         lanes_t rate = *(const lanes_t *)&state->S[at] - C;
@@ -123,11 +139,12 @@ static const double row_error[] = {71.0 / 57600,      0,          -71.0 / 16695,
 
 /* out = y + h sum of row[j] k[j] */
 LANES_INLINE void combine(lanes_t out[LANE_VARIABLES], const lanes_t y[LANE_VARIABLES],
-                          const lanes_t (*k)[LANE_VARIABLES], const double *row, int count, double h)
+                          const lanes_t (*k)[LANE_VARIABLES], const double *row, int count, double h,
+                          int variables)
 {
     double by[STAGES];
     for (int j = 0; j < count; j++) by[j] = h * row[j];
-    for (int i = 0; i < LANE_VARIABLES; i++) {
+    for (int i = 0; i < variables; i++) {
         lanes_t sum = y[i];
         for (int j = 0; j < count; j++) /* the newest last: it is waited for */
             if (row[j] != 0) sum += k[j][i] * by[j];
@@ -142,17 +159,19 @@ LANES_INLINE void activation_after(lanes_t *out, const lanes_t *C, const lanes_t
     *out = (*C + *S_rate * h) * *decay;
 }
 
-/* One tried step of one row of lanes; the greatest error of each lane into *error, how far it is beyond a
- * bound into *past. */
+/* One tried step of one row of lanes (written out twice: with and without potentiation); the greatest error
+ * of each lane into *error, how far it is beyond a bound into *past. */
 LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsigned at, double h,
-                          const double factor[STAGES], lanes_t *error, lanes_t *past)
+                          const double factor[STAGES], lanes_t *error, lanes_t *past, bool potentiates)
 {
+    const int variables = potentiates ? LANE_VARIABLES : LANE_P;
     const struct muscle_state *state = &engine->state;
     struct lanes_constants constants;
     lanes_t y[LANE_VARIABLES], z[LANE_VARIABLES], k[STAGES][LANE_VARIABLES];
     load_constants(&constants, engine, at);
     load_state(y, state, at);
-    for (int i = 0; i < LANE_VARIABLES; i++) k[0][i] = *(const lanes_t *)&engine->derivative[i][at];
+    z[LANE_P] = y[LANE_P];
+    for (int i = 0; i < variables; i++) k[0][i] = *(const lanes_t *)&engine->derivative[i][at];
     const lanes_t C = *(const lanes_t *)&state->C[at], S = *(const lanes_t *)&state->S[at],
                   w = *(const lanes_t *)&state->w[at];
     const lanes_t rate = 1 / *(const lanes_t *)&state->tau_c[at], S_rate = S * rate;
@@ -164,34 +183,36 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
     lanes_exp(&e89, &argument);
     const lanes_t e2 = e1 * e1, e3 = e2 * e1, e4 = e2 * e2, e8 = e4 * e4, e10 = e8 * e2;
 
-    combine(z, y, k, row_2, 1, h);
+    combine(z, y, k, row_2, 1, h, variables);
     activation_after(&Cs, &C, &S_rate, &e2, node[1] * h);
     drive = w * factor[1];
-    lanes_derive(k[1], z, &Cs, &drive, &constants);
-    combine(z, y, k, row_3, 2, h);
+    lanes_derive(k[1], z, &Cs, &drive, &constants, potentiates);
+    combine(z, y, k, row_3, 2, h, variables);
     activation_after(&Cs, &C, &S_rate, &e3, node[2] * h);
     drive = w * factor[2];
-    lanes_derive(k[2], z, &Cs, &drive, &constants);
-    combine(z, y, k, row_4, 3, h);
+    lanes_derive(k[2], z, &Cs, &drive, &constants, potentiates);
+    combine(z, y, k, row_4, 3, h, variables);
     activation_after(&Cs, &C, &S_rate, &e8, node[3] * h);
     drive = w * factor[3];
-    lanes_derive(k[3], z, &Cs, &drive, &constants);
-    combine(z, y, k, row_5, 4, h);
+    lanes_derive(k[3], z, &Cs, &drive, &constants, potentiates);
+    combine(z, y, k, row_5, 4, h, variables);
     activation_after(&Cs, &C, &S_rate, &e89, node[4] * h);
     drive = w * factor[4];
-    lanes_derive(k[4], z, &Cs, &drive, &constants);
-    combine(z, y, k, row_6, 5, h);
+    lanes_derive(k[4], z, &Cs, &drive, &constants, potentiates);
+    combine(z, y, k, row_6, 5, h, variables);
     activation_after(&Cs, &C, &S_rate, &e10, h);
     drive = w * factor[5];
-    lanes_derive(k[5], z, &Cs, &drive, &constants);
-    combine(z, y, k, row_7, 6, h);
-    lanes_derive(k[6], z, &Cs, &drive, &constants);
+    lanes_derive(k[5], z, &Cs, &drive, &constants, potentiates);
+    combine(z, y, k, row_7, 6, h, variables);
+    lanes_derive(k[6], z, &Cs, &drive, &constants, potentiates);
 
     *(lanes_t *)&trial->C[at] = Cs;
     *(lanes_t *)&trial->S[at] = S * e10;
     lanes_t miss[LANE_VARIABLES], size;
-    combine(miss, (const lanes_t[LANE_VARIABLES]){{0}}, k, row_error, STAGES, h);
-    for (int i = 0; i < LANE_VARIABLES; i++) {
+    combine(miss, (const lanes_t[LANE_VARIABLES]){{0}}, k, row_error, STAGES, h, variables);
+    *(lanes_t *)&trial->y[LANE_P][at] = y[LANE_P];
+    *(lanes_t *)&trial->derivative[LANE_P][at] = (lanes_t){0};
+    for (int i = 0; i < variables; i++) {
         *(lanes_t *)&trial->y[i][at] = z[i];
         *(lanes_t *)&trial->derivative[i][at] = k[6][i];
         lanes_magnitude(&miss[i], &miss[i]);
@@ -207,7 +228,7 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
     lanes_greater(error, &of_A, &of_phi);
     lanes_greater(error, error, &of_Km);
     lanes_greater(error, error, &of_tau1);
-    lanes_greater(error, error, &miss[LANE_P]);
+    if (potentiates) lanes_greater(error, error, &miss[LANE_P]);
     lanes_greater(past, &under, &over);
 }
 
@@ -215,10 +236,14 @@ LANES_INLINE void try_row(const struct engine *engine, struct trial *trial, unsi
 LANES_CLONES static void try_step(const struct engine *engine, struct trial *trial, double h,
                                   const double factor[STAGES])
 {
+    const bool potentiates = engine->muscle.parameters.has_potentiation;
     lanes_t worst = {0}, farthest = {0}, error, past;
     farthest -= 1;
     for (unsigned at = 0; at < engine->state.lanes; at += LANE_WIDTH) {
-        try_row(engine, trial, at, h, factor, &error, &past);
+        if (potentiates)
+            try_row(engine, trial, at, h, factor, &error, &past, true);
+        else
+            try_row(engine, trial, at, h, factor, &error, &past, false);
         lanes_greater(&worst, &error,
                       &worst); /* what is no number stays seen: comparisons with it are false */
         lanes_greater(&farthest, &past, &farthest);
@@ -288,8 +313,7 @@ static void settle_bounds(struct engine *engine)
 /* The longest step worth trying first after a pulse. */
 static double first_step(const struct engine *engine)
 {
-    const double share = engine->tolerance < 1e-7 ? 0.08 : 0.3;
-    return engine->fastest > 0 ? share / engine->fastest : 1;
+    return engine->fastest > 0 ? engine->first_share / engine->fastest : 1;
 }
 
 /* True where force and activation have died away in every lane. */
@@ -394,6 +418,7 @@ static double find_step(struct engine *engine, struct trial *trial, double left_
     double factor[STAGES];
     for (;;) {
         double h = engine->step_ms;
+        if (h > engine->step_most_ms && engine->time_ms < engine->quiet_ms) h = engine->step_most_ms;
         *ended = h >= left_ms;
         if (*ended)
             h = left_ms;

@@ -14,14 +14,16 @@ struct engine {
     LANE_ALIGNED double
         scale[LANES_MAX]; /* greatest phi each lane has had: what its error is measured against */
     double time_ms;
-    double step_ms;   /* what the last step's error suggests; 0: ask the state */
-    double tolerance; /* of a step, relative */
-    bool fresh;       /* the derivatives are those of the state */
-    bool given;       /* a pulse has been given */
-    bool standing;    /* a state stands on its bound */
-    double quiet_ms;  /* activation can not have died away before this */
+    double step_ms;     /* what the last step's error suggests; 0: ask the state */
+    double tolerance;   /* of a step, relative */
+    double first_share; /* first step after a pulse, of the time in which x changes by itself */
+    bool fresh;         /* the derivatives are those of the state */
+    bool given;         /* a pulse has been given */
+    bool standing;      /* a state stands on its bound */
+    double quiet_ms;    /* activation can not have died away before this */
     double quiet_wait_ms;
-    double fastest;   /* greatest relative rate of x where `fresh`, 1/ms: what a first step is chosen from */
+    double step_most_ms; /* while activation lives */
+    double fastest; /* greatest relative rate of x where `fresh`, 1/ms: what a first step is chosen from */
     const struct motion *motion;
     double motion_end_ms; /* of the straight piece of motion now; infinity without */
     size_t motion_piece;
@@ -29,6 +31,8 @@ struct engine {
 };
 
 void engine_init(struct engine *engine, const struct muscle *muscle, bool exact, const struct motion *motion);
+/* Another tolerance of a step than the two of engine_init (benches). */
+void engine_tolerate(struct engine *engine, double tolerance);
 /* Takes one accepted step, at most to `to_ms`. */
 void engine_step(struct engine *engine, double to_ms);
 void engine_advance(struct engine *engine, double to_ms);
