@@ -4,8 +4,11 @@
 #include "core/report/option.h"
 
 /* X(name): command_NAME in NAME.c. The order is that of the work. */
-#define PULSEWRIGHT_COMMANDS(X) \
-    X(plan)                     \
+#define PULSEWRIGHT_COMMANDS(X)                                                                              \
+    X(predict)                                                                                               \
+    X(curves)                                                                                                \
+    X(plan)                                                                                                  \
+    X(pulses)                                                                                                \
     X(recount)
 
 #define COMMAND_DECLARE(name) extern const struct command command_##name;
