@@ -244,8 +244,7 @@ LANES_CLONES static void try_step(const struct engine *engine, struct trial *tri
             try_row(engine, trial, at, h, factor, &error, &past, true);
         else
             try_row(engine, trial, at, h, factor, &error, &past, false);
-        lanes_greater(&worst, &error,
-                      &worst); /* what is no number stays seen: comparisons with it are false */
+        lanes_greater(&worst, &error, &worst);
         lanes_greater(&farthest, &past, &farthest);
     }
     trial->error = lanes_greatest(&worst) / engine->tolerance;
