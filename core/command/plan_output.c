@@ -285,6 +285,20 @@ static enum status write_picture(const struct arguments *arguments, const struct
 #endif
 }
 
+enum status plan_output_ready(const struct arguments *arguments)
+{
+    static const char *const outputs[] = {"-o", "--picture"};
+    if (!argument(arguments, "-o")) return command_fail(arguments, STATUS_USAGE, "-o is needed");
+    for (size_t i = 0; i < sizeof outputs / sizeof *outputs && !argument_given(arguments, "--replace"); i++) {
+        const char *path = argument(arguments, outputs[i]);
+        if (path && access(path, F_OK) == 0)
+            return command_fail(arguments, STATUS_USAGE,
+                                "%s is there already; --replace writes anew and keeps the old one as %s.1",
+                                path, path);
+    }
+    return STATUS_OK;
+}
+
 enum status plan_output_write(const struct arguments *arguments, const struct plan *plan, struct message *why)
 {
     struct text_out out = {0};

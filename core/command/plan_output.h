@@ -11,6 +11,8 @@ void plan_output_text(const struct plan *plan);
 void plan_output_json(const struct plan *plan, double seconds);
 /* The ledger as `figures` (and `shown`) of an open JSON object. */
 void plan_output_figures(struct json *json, const struct ledger *ledger);
+/* Before the work: -o is needed and, without --replace, neither it nor --picture may exist. */
+enum status plan_output_ready(const struct arguments *arguments);
 /* Writes the plan to -o (--replace) and, with --picture, the session's picture. */
 enum status plan_output_write(const struct arguments *arguments, const struct plan *plan,
                               struct message *why);

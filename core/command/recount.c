@@ -72,8 +72,9 @@ static enum status run(const struct arguments *arguments)
     struct plan_progress progress;
     double ensemble = ENSEMBLE_DRAWS, seed = 1.0;
     struct plan_options given = {.progress = plan_progress_show, .context = &progress};
-    if (!argument(arguments, "-o")) return command_fail(arguments, STATUS_USAGE, "-o PLAN2 is needed");
-    enum status status = argument_number(arguments, "--ensemble", 0.0, ENSEMBLE_DRAWS_MAX, &ensemble);
+    enum status status = plan_output_ready(arguments);
+    if (status == STATUS_OK)
+        status = argument_number(arguments, "--ensemble", 0.0, ENSEMBLE_DRAWS_MAX, &ensemble);
     if (status == STATUS_OK) status = argument_number(arguments, "--seed", 0.0, 9007199254740992.0, &seed);
     if (status != STATUS_OK) return status;
     given.ensemble = (unsigned)ensemble;
