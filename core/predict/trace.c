@@ -29,6 +29,7 @@ struct pass {
     double window_from_ms, window_to_ms;
     struct gather whole, window, period;
     double period_start_ms, ripple_n;         /* start NAN: no period is open */
+    double period_length_ms;                  /* of the last whole one; NAN: none yet */
     size_t last_given;                        /* index + 1 of the last pulse given */
     double last_duration_us, last_current_ma; /* settings of the window's last pulse */
     double window_potentiation;
@@ -99,12 +100,22 @@ static void tell_periods(const struct train_pulse *pulses, size_t count, bool *s
 static void period_end(struct pass *pass)
 {
     const double now = pass->engine.time_ms;
+    if (now > pass->period_start_ms) pass->period_length_ms = now - pass->period_start_ms;
     if (pass->period_start_ms >= pass->window_from_ms - 1e-9 && now <= pass->window_to_ms + 1e-9 &&
         now > pass->period_start_ms) {
         const double range = pass->period.greatest - pass->period.least;
         if (!(range <= pass->ripple_n)) pass->ripple_n = range;
     }
     pass->period_start_ms = (double)NAN;
+}
+
+/* The window ends here. A period as long as the one before that ends here too is whole, though no pulse
+ * follows it. */
+static void window_end(struct pass *pass)
+{
+    pass->window_potentiation = muscle_potentiation(&pass->engine.state);
+    const double end_ms = pass->period_start_ms + pass->period_length_ms;
+    if (fabs(end_ms - pass->window_to_ms) < 1e-6) period_end(pass);
 }
 
 /* Advances, gathering; never across a corner of the window. Force after until - delay is not shown and not
@@ -122,8 +133,7 @@ static void pass_advance(struct pass *pass, double to_ms)
         if (now < corner[2]) gather_add(&pass->whole, &piece);
         if (now >= corner[0] && now < corner[1]) gather_add(&pass->window, &piece);
         gather_add(&pass->period, &piece);
-        if (now < corner[1] && end >= corner[1])
-            pass->window_potentiation = muscle_potentiation(&pass->engine.state);
+        if (now < corner[1] && end >= corner[1]) window_end(pass);
     }
 }
 
@@ -267,7 +277,7 @@ static enum status pass_init(struct pass *pass, const struct muscle *muscle, con
     pass->window_from_ms = windowed ? options->window_from_ms : first_ms + 0.5 * (last_ms - first_ms);
     pass->window_to_ms = windowed ? options->window_to_ms : last_ms;
     pass->whole = pass->window = pass->period = gather_empty();
-    pass->period_start_ms = pass->ripple_n = (double)NAN;
+    pass->period_start_ms = pass->ripple_n = pass->period_length_ms = (double)NAN;
     pass->window_potentiation = muscle_potentiation(&pass->engine.state);
     if (!(pass->until_ms >= 0) || !isfinite(pass->until_ms) ||
         !(pass->until_ms / pass->step_ms < SAMPLES_MAX))
@@ -303,10 +313,14 @@ enum status predict_trace(const struct muscle_parameters *parameters, const stru
     status = trace_make(trace, (size_t)(pass.until_ms / pass.step_ms * (1 + 1e-12)) + 1, why);
     if (status == STATUS_OK) {
         pass_run(&pass, trace);
+        if (!isfinite(engine_force_n(&pass.engine)))
+            status = status_fail(why, STATUS_REFUSED,
+                                 "force left the range of numbers: the parameters are too extreme");
         trace->bound_A = pass.engine.state.bound_A;
         trace->bound_tau1 = pass.engine.state.bound_tau1;
-        if (summary) summarise(&pass, trace, options->exact, summary);
+        if (summary && status == STATUS_OK) summarise(&pass, trace, options->exact, summary);
     }
     free(pass.same_period);
+    if (status != STATUS_OK) trace_free(trace);
     return status;
 }
