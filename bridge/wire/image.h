@@ -1,5 +1,6 @@
 /* Image: a plan as the wire carries it, proven as it streams. h_n = 0, h_(i-1) = BLAKE2b-128(s_i || h_i),
- * root = BLAKE2b-256(header || limits || identity || n || h_0). Freestanding: shared with the device. Little-endian encodings, fixed sizes. */
+ * root = BLAKE2b-256(header || limits || identity || n || h_0). Freestanding: shared with the device.
+ * Little-endian encodings, fixed sizes. */
 #ifndef PULSEWRIGHT_BRIDGE_WIRE_IMAGE_H
 #define PULSEWRIGHT_BRIDGE_WIRE_IMAGE_H
 #include "core/dose/dose.h"
@@ -8,7 +9,13 @@
 #include <stddef.h>
 #include <stdint.h>
 
-enum { IMAGE_CHANNELS_MAX = 8, IMAGE_LINK_SIZE = 16, IMAGE_ROOT_SIZE = 32, IMAGE_NAME_SIZE = 32, IMAGE_SEGMENTS_MAX = 1 << 20 };
+enum {
+    IMAGE_CHANNELS_MAX = 8,
+    IMAGE_LINK_SIZE = 16,
+    IMAGE_ROOT_SIZE = 32,
+    IMAGE_NAME_SIZE = 32,
+    IMAGE_SEGMENTS_MAX = 1 << 20
+};
 enum image_kind { IMAGE_TIMED = 1, IMAGE_ANGLE = 2, IMAGE_HELD = 3 };
 enum signoff_kind { SIGNOFF_CLINICAL = 1, SIGNOFF_REHEARSAL = 2 };
 
@@ -48,7 +55,12 @@ struct image_segment {
 };
 
 /* Encodings; each returns the octets written (a constant of the kind). */
-enum { IMAGE_HEADER_OCTETS = 77, IMAGE_LIMITS_OCTETS = 112, IMAGE_IDENTITY_OCTETS = 69, IMAGE_SEGMENT_OCTETS = 36 };
+enum {
+    IMAGE_HEADER_OCTETS = 72,
+    IMAGE_LIMITS_OCTETS = 105,
+    IMAGE_IDENTITY_OCTETS = 67,
+    IMAGE_SEGMENT_OCTETS = 35
+};
 size_t image_header_encode(const struct image_header *header, uint8_t *out);
 size_t image_limits_encode(const struct dose_limits *limits, uint8_t channel, uint8_t *out);
 size_t image_identity_encode(const struct image_identity *identity, uint8_t *out);
@@ -73,8 +85,10 @@ struct image {
 /* Fills indices, links, h0 and root from segments, header, limits and identity. */
 void image_seal(struct image *image);
 /* The two hashes by themselves: what the device computes. */
-void image_link(const uint8_t *segment_octets, size_t size, const uint8_t next[IMAGE_LINK_SIZE], uint8_t link[IMAGE_LINK_SIZE]);
-void image_root(const struct image_header *header, const struct dose_limits *limits, const struct image_identity *identity, uint32_t n,
-                const uint8_t h0[IMAGE_LINK_SIZE], uint8_t root[IMAGE_ROOT_SIZE]);
+void image_link(const uint8_t *segment_octets, size_t size, const uint8_t next[IMAGE_LINK_SIZE],
+                uint8_t link[IMAGE_LINK_SIZE]);
+void image_root(const struct image_header *header, const struct dose_limits *limits,
+                const struct image_identity *identity, uint32_t n, const uint8_t h0[IMAGE_LINK_SIZE],
+                uint8_t root[IMAGE_ROOT_SIZE]);
 
 #endif
