@@ -13,6 +13,8 @@ enum link_kind { LINK_SERIAL, LINK_PSEUDO_TERMINAL, LINK_MEMORY };
 
 /* Opens an address: `serial:/dev/ttyACM0`, `pty:/path`. Exclusive: TIOCEXCL and flock. (`twin:` is bridge/twin's: it starts one and gives its pty.) */
 enum status link_open(const char *address, unsigned baud, struct link **link, struct message *why);
+/* The other end of a pseudo-terminal, for a twin; takes the descriptor. */
+enum status link_of_master(int descriptor, struct link **link, struct message *why);
 /* Two ends in memory. */
 enum status link_memory_pair(struct link **a, struct link **b, struct message *why);
 void link_close(struct link *link);
