@@ -242,6 +242,63 @@ static void motions_end_or_go_on(void **state)
     trace_free(&c);
 }
 
+/* A cycling motion, sampled each 10 ms: the default engine against the exact one, and the exact one against
+ * classical Runge-Kutta steps of 0.01 ms of the equations as the model chapter writes them (one full tier, no
+ * fatigue). */
+static void a_cycling_motion_is_followed(void **state)
+{
+    (void)state;
+    enum { ROWS = 121 };
+    static double time_ms[ROWS], length[ROWS], velocity[ROWS];
+    const struct muscle_parameters p = muscle_untiring();
+    const double turn = 6.28318530717958647692 / 1200;
+    for (int i = 0; i < ROWS; i++) {
+        time_ms[i] = 10 * i;
+        length[i] = 1 + 0.2 * cos(turn * time_ms[i]);
+        velocity[i] = -0.2 * sin(turn * time_ms[i]);
+    }
+    const struct motion motion = {.samples = ROWS,
+                                  .time_ms = time_ms,
+                                  .relative_length = length,
+                                  .relative_velocity = velocity,
+                                  .periodic = true};
+    struct train_pulse pulses[COUNT];
+    const size_t count = pulses_at(50, pulses);
+    struct trace_options options = {
+        .exact = true, .step_ms = 5, .until_ms = 1100, .window_from_ms = none, .window_to_ms = none};
+    struct trace exact = traced(&p, pulses, count, &motion, &options, NULL);
+    options.exact = false;
+    struct trace quick = traced(&p, pulses, count, &motion, &options, NULL);
+    double peak = 0, F = 0;
+    for (size_t i = 0; i < exact.samples; i++) peak = fmax(peak, exact.force_n[i]);
+    const double h = 0.01;
+    for (int i = 0; i < 110000; i++) {
+        if (i % 500 == 0) {
+            assert_near(exact.force_n[i / 500], F, 2e-7 * peak, 0);
+            assert_near(quick.force_n[i / 500], F, 1e-4 * peak, 0);
+        }
+        double slope[4], at = F;
+        for (int s = 0; s < 4; s++) {
+            const double t = (i + (s == 0 ? 0 : s == 3 ? 1 : 0.5)) * h;
+            double C = 0;
+            for (int j = 0; j < COUNT && 50.0 * j <= i * h + 1e-9; j++) {
+                const double R = j == 0 ? 1 : 1 + 0.143 * exp(-50.0 / 20), since = (t - 50.0 * j) / 20;
+                C += R * since * exp(-since);
+            }
+            const int row = (int)fmin(floor((i + 0.5) * h / 10), ROWS - 2);
+            const double part = t / 10 - row, l = length[row] + part * (length[row + 1] - length[row]);
+            const double u = velocity[row] + part * (velocity[row + 1] - velocity[row]);
+            const double V = u > 0 ? (1 + 35 * u) / (1 + 25 * u) : (1 + u) / (1 - u / 0.25);
+            const double x = C / (0.103 + C);
+            slope[s] = 3.009 * x * exp(-(l - 1) * (l - 1) / 0.45) * V - at / (50.957 + 60 * x);
+            at = F + (s < 2 ? 0.5 : 1) * h * slope[s];
+        }
+        F += h / 6 * (slope[0] + 2 * slope[1] + 2 * slope[2] + slope[3]);
+    }
+    trace_free(&exact);
+    trace_free(&quick);
+}
+
 static void pulses_too_near_are_refused(void **state)
 {
     (void)state;
@@ -263,6 +320,7 @@ int main(void)
         cmocka_unit_test(measures_of_a_hold_follow_their_definitions),
         cmocka_unit_test(a_motion_multiplies_the_drive),
         cmocka_unit_test(motions_end_or_go_on),
+        cmocka_unit_test(a_cycling_motion_is_followed),
         cmocka_unit_test(pulses_too_near_are_refused),
     };
     return cmocka_run_group_tests(tests, NULL, NULL) != 0;
