@@ -12,7 +12,7 @@
 #include <stdlib.h>
 #include <time.h>
 
-enum { CONTRACTIONS = 4, EACH = 30, PULSES = CONTRACTIONS * EACH, SAMPLES = 4000 };
+enum { CONTRACTIONS = 4, EACH = 30, PULSES = CONTRACTIONS * EACH, SAMPLES = 4000, TURNS = 50 };
 
 static double now_s(void)
 {
@@ -66,7 +66,7 @@ static double engine_ns(const struct muscle_parameters *p, double tolerance)
     struct predictor *predictor = predictor_new(p, tolerance < 1e-6, NULL, &why);
     engine_tolerate(&predictor->engine, tolerance);
     double best = (double)INFINITY;
-    for (int turn = 0; turn < 5; turn++) {
+    for (int turn = 0; turn < TURNS; turn++) {
         const double start_ms = predictor_time_ms(predictor) + 1000, begun = now_s();
         for (int repeat = 0; repeat < 20; repeat++)
             for (int i = 0; i < PULSES; i++) {
@@ -77,8 +77,8 @@ static double engine_ns(const struct muscle_parameters *p, double tolerance)
     }
     if (getenv("PULSEWRIGHT_BENCH_STEPS"))
         fprintf(stderr, "tolerance %g: %.2f steps and %.2f rejected a pulse\n", tolerance,
-                (double)predictor->engine.steps / (100.0 * PULSES),
-                (double)predictor->engine.rejected / (100.0 * PULSES));
+                (double)predictor->engine.steps / (20.0 * TURNS * PULSES),
+                (double)predictor->engine.rejected / (20.0 * TURNS * PULSES));
     predictor_free(predictor);
     return best;
 }
@@ -93,7 +93,7 @@ static double cvode_error(const struct muscle_parameters *p, const struct cvode_
 static double cvode_ns(const struct muscle_parameters *p, const struct cvode_settings *settings)
 {
     double best = (double)INFINITY;
-    for (int turn = 0; turn < 3; turn++) {
+    for (int turn = 0; turn < 5; turn++) {
         const double begun = now_s();
         cvode_run(p, pulses, PULSES, settings, &pulses[PULSES - 1].time_ms, 1, got_n, spare, NULL, NULL);
         best = fmin(best, (now_s() - begun) * 1e9 / PULSES);
