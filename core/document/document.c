@@ -244,6 +244,10 @@ void text_out_free(struct text_out *out)
 char *number_text(double value, char buffer[32])
 {
     char text[32] = "";
+    if (fabs(value) < 1e15 && !(value < floor(value)) && !(value > floor(value))) { /* 60 and not 6e+01 */
+        (void)snprintf(buffer, 32, "%.0f", value);
+        return buffer;
+    }
     for (int digits = 1; digits <= 17; digits++) {
         (void)snprintf(text, sizeof text, "%.*g", digits, value);
         const double back = strtod(text, NULL);

@@ -41,6 +41,7 @@ enum status document_write_file(const char *path, const void *data, size_t size,
 struct text_out {
     char *data;
     size_t size, capacity;
+    bool commented; /* documents are written with what their keys mean, as `begin` does */
 };
 __attribute__((format(printf, 2, 3))) void text_out_print(struct text_out *out, const char *format, ...);
 void text_out_free(struct text_out *out);

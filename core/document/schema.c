@@ -60,6 +60,10 @@ void schema_note(struct reading *reading, const char *path, struct fy_node *node
     if (mark) {
         place.line = mark->line + 1;
         place.column = mark->column + 1;
+        const char *data = reading->bytes->data; /* a quoted text's mark stands behind its quote */
+        if (mark->input_pos > 0 && mark->input_pos <= reading->bytes->size && mark->column > 0 &&
+            (data[mark->input_pos - 1] == '"' || data[mark->input_pos - 1] == '\''))
+            place.column--;
     }
     if (place.path) reading->place[reading->places++] = place;
 }

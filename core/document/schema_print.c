@@ -157,24 +157,56 @@ static void print_value(const struct field *field, const void *object, struct te
     }
 }
 
+/* What a key may hold: its help, its choices or its bounds. */
+static void print_meaning(const struct field *field, struct text_out *out)
+{
+    if (field->help) text_out_print(out, "%s", field->help);
+    const char *between = "; ";
+    for (int i = 0; field->choices && field->choices[i]; i++) {
+        if (!field->choices[i][0]) continue; /* a number without a name */
+        text_out_print(out, "%s%s", between, field->choices[i]);
+        between = " | ";
+    }
+    if (field->type != FIELD_NUMBER && field->type != FIELD_COUNT) return;
+    text_out_print(out, field->above_least ? " (above %g, to %g)" : " (%g to %g)", field->least, field->most);
+}
+
+/* The comment of a key: one line, and one for each key of a map that is written on one line. */
+static void print_comment(const struct field *field, struct text_out *out, int indent, bool given)
+{
+    text_out_print(out, "# %s%s: ", field->key, given ? "" : " (may be added)");
+    print_meaning(field, out);
+    if (!field->of || !field->of->flow) return;
+    for (const struct field *inner = field->of->fields; inner->key; inner++) {
+        text_out_print(out, "\n%*s#   %s%s: ", indent, "", inner->key,
+                       inner->required ? "" : " (may be left out)");
+        print_meaning(inner, out);
+    }
+}
+
 /* In a block the first key follows what the caller wrote ("- " or a new line); at depth the map starts on a
  * line of its own. */
 static void print_map(const struct schema *schema, const void *object, struct text_out *out, int indent,
                       bool flow)
 {
     bool some = false;
+    const bool commented = out->commented && !flow;
     if (flow) text_out_print(out, "{");
     for (const struct field *field = schema->fields; field->key; field++) {
-        if (!is_there(field, object)) continue;
-        if (flow)
-            text_out_print(out, "%s", some ? ", " : "");
-        else if (some)
-            text_out_print(out, "\n%*s", indent, "");
+        const bool given = is_there(field, object);
+        if (!given && !commented) continue;
+        if (some && flow) text_out_print(out, ", ");
+        if (some && !flow) text_out_print(out, "\n%*s", indent, "");
         some = true;
+        if (commented) print_comment(field, out, indent, given);
+        if (!given) continue;
+        if (commented) text_out_print(out, "\n%*s", indent, "");
         const bool block = field->type == FIELD_MAP && !flow && !field->of->flow;
-        text_out_print(out, "%s:%s", field->key, block ? "" : " ");
+        const bool list = !flow && (field->type == FIELD_LIST || field->type == FIELD_ARRAY) &&
+                          *(const size_t *)at(object, field->count) > 0;
+        text_out_print(out, "%s:%s", field->key, block || list ? "" : " ");
         if (block) text_out_print(out, "\n%*s", indent + 2, "");
-        print_value(field, object, out, block ? indent + 2 : indent + 2, flow);
+        print_value(field, object, out, indent + 2, flow);
     }
     if (flow) text_out_print(out, "}");
 }
