@@ -5,6 +5,8 @@
 
 /* X(name): command_NAME in NAME.c. The order is that of the work. */
 #define PULSEWRIGHT_COMMANDS(X)                                                                              \
+    X(begin)                                                                                                 \
+    X(check)                                                                                                 \
     X(predict)                                                                                               \
     X(curves)                                                                                                \
     X(plan)                                                                                                  \
