@@ -229,6 +229,35 @@ static enum status lower_current(struct maker *maker, const struct settings_spac
     return STATUS_OK;
 }
 
+/* Where the strongest current does not carry the demand its coarse steps of force may be what fails: lower
+ * ones are searched too. */
+static enum status other_currents(struct maker *maker, const struct search_options *options,
+                                  struct message *why)
+{
+    static const double shares[] = {0.65, 0.45, 0.3};
+    const struct settings_space strongest = maker->problem.space;
+    const double most =
+        settings_share(&strongest, (double)settings_duration_to(&strongest, strongest.strongest_ua, NULL),
+                       (double)strongest.strongest_ua);
+    struct settings_space best = strongest;
+    enum status status = STATUS_OK;
+    for (size_t i = 0;
+         i < sizeof shares / sizeof *shares && maker->found.outcome.first_miss != 0 && status == STATUS_OK;
+         i++) {
+        struct search_result lower = {0};
+        maker->problem.space = maker->whole;
+        settings_fix_current(&maker->problem.space,
+                             settings_current_for(&maker->whole, 0.0, shares[i] * most));
+        status = search_policies(&maker->work, &maker->problem, maker->stimulator, options, &lower, why);
+        if (status != STATUS_OK || !search_better(maker->demand, &lower.outcome, &maker->found.outcome))
+            continue;
+        maker->found = lower;
+        best = maker->problem.space;
+    }
+    maker->problem.space = best;
+    return status;
+}
+
 /* The cap could not be kept: nothing is given. */
 static void drop_blocks(struct plan_channel *channel)
 {
@@ -249,8 +278,10 @@ enum status maker_make(struct maker *maker, struct plan *plan, const struct prof
         search.near = maker->found.policy;
         enum status status =
             search_policies(&maker->work, problem, maker->stimulator, &search, &maker->found, why);
-        if (status == STATUS_OK && round == 0 && problem->space.choose_cover)
-            status = lower_current(maker, &maker->whole, &search, why);
+        const bool first = round == 0 && problem->space.choose_cover;
+        if (status == STATUS_OK && first)
+            status = maker->found.outcome.first_miss == 0 ? lower_current(maker, &maker->whole, &search, why)
+                                                          : other_currents(maker, &search, why);
         if (status == STATUS_OK) status = maker_fill(maker, why);
         if (status != STATUS_OK) return status;
         plan->first_miss_why = maker->found.outcome.first_miss_why;

@@ -15,6 +15,8 @@ struct maker {
     struct predictor *rested, *awake;
     struct session_contraction *contraction; /* problem.contractions of them */
     struct search_result found;
+    struct session_policy near; /* what would.c searches about, once known */
+    bool near_known;
 };
 
 /* Resolves the target, the space of settings and the muscle. STATUS_REFUSED where nothing can be planned.

@@ -9,7 +9,7 @@
 #include <math.h>
 #include <string.h>
 
-enum { HALVINGS = 6, WORSE_MAX = 3 };
+enum { HALVINGS = 6, WORSE_MAX = 2 };
 static const double coarse_ratio = 1.2;
 static const double hopeless_ripple = 1.25; /* of the limit: fatigue slows a muscle and smooths a little */
 static const double fuse_ms = 800.0;
@@ -185,13 +185,17 @@ static enum status scan_starts(struct scan *scan, struct session_policy policy)
     return climb.any ? refine(scan, policy, &climb) : STATUS_OK;
 }
 
-/* The best first frequency with another opening or pattern, and its two neighbours. */
-static enum status scan_about(struct scan *scan, struct session_policy policy, double frequency_pps)
+/* The best first frequency with another opening, or with pairs, which carry twice the pulses; and a
+ * neighbour. */
+static enum status scan_about(struct scan *scan, struct session_policy policy,
+                              const struct session_policy *best)
 {
-    static const double factors[] = {1.0, 0.85, 1.2};
+    static const double factors[] = {1.0, 0.85};
     const struct session_frequencies *list = scan->frequencies;
+    const double twice = policy.pairs == best->pairs ? 1.0 : policy.pairs ? 0.6 : 1.7;
     for (size_t i = 0; i < sizeof factors / sizeof *factors; i++) {
-        const double steps = floor((frequency_pps * factors[i] - list->from) / list->step + 0.5);
+        const double steps =
+            floor((best->frequency_pps * twice * factors[i] - list->from) / list->step + 0.5);
         if (steps < 0.0 || steps >= (double)list->count) continue;
         policy.frequency_pps = frequency_at(list, (unsigned)steps);
         struct session_outcome outcome;
@@ -260,10 +264,11 @@ enum status search_policies(struct session_work *work, const struct session_prob
             scan.frequencies = &list;
             const struct session_policy policy = {
                 .opening = opening, .pairs = pairs == 1, .steps = (demand->vary & VARY_FREQUENCY) && !fixed};
+            const struct session_policy about = result->policy;
             const bool others = result->any && result->outcome.met > 0;
             const enum status status = options->quick ? scan_near(&scan)
-                                       : others ? scan_about(&scan, policy, result->policy.frequency_pps)
-                                                : scan_starts(&scan, policy);
+                                       : others       ? scan_about(&scan, policy, &about)
+                                                      : scan_starts(&scan, policy);
             if (status != STATUS_OK) return status;
         }
     if (!result->any)

@@ -7,18 +7,42 @@
 
 enum { TARGET_ROUNDS = 6, HOLD_ROUNDS = 6, HOLD_STEP_MS = 50 };
 
-/* Is a changed demand met in full, with the space of settings as it is? */
+/* Is a changed demand met in full, with the space of settings as it is? Searched near the policy that did
+ * best; where none made even one contraction, the whole scan, until one does. */
 static enum status try_demand(struct maker *maker, const struct plan_options *options, bool *yes,
                               struct message *why)
 {
-    const struct search_options search = {.quick = true,
-                                          .near = maker->found.policy,
+    const struct search_options search = {.quick = maker->near_known,
+                                          .near = maker->near,
                                           .progress = options->progress,
                                           .context = options->context};
     struct search_result result = {0};
     const enum status status =
         search_policies(&maker->work, &maker->problem, maker->stimulator, &search, &result, why);
     *yes = status == STATUS_OK && result.outcome.first_miss == 0;
+    if (*yes && !maker->near_known) {
+        maker->near = result.policy;
+        maker->near_known = true;
+    }
+    return status;
+}
+
+/* A current that is chosen once would be chosen lower for less force, and give finer steps: by the share that
+ * is in need, roughly. */
+static enum status try_currents(struct maker *maker, double less, const struct plan_options *options,
+                                bool *yes, struct message *why)
+{
+    static const double shares[] = {0.95, 0.5};
+    const struct settings_space *whole = &maker->whole;
+    const uint32_t longest = settings_duration_to(whole, whole->strongest_ua, NULL);
+    const double most = settings_share(whole, (double)longest, (double)whole->strongest_ua);
+    enum status status = STATUS_OK;
+    for (size_t i = 0; i < sizeof shares / sizeof *shares && !*yes && status == STATUS_OK; i++) {
+        maker->problem.space = *whole;
+        settings_fix_current(&maker->problem.space,
+                             settings_current_for(whole, 0.0, fmin(1.0, less) * most * shares[i]));
+        status = try_demand(maker, options, yes, why);
+    }
     return status;
 }
 
@@ -37,17 +61,9 @@ static enum status works(struct maker *maker, const struct demand *demand, doubl
     if (edge > 0.0 && isfinite(cap))
         problem->solve_target_n = fmin(target_n, cap * kept.solve_target_n / edge);
     enum status status = try_demand(maker, options, yes, why);
-    if (status == STATUS_OK && !*yes && maker->whole.choose_cover) {
-        /* a current that is chosen once would be chosen lower for less force, and give finer steps */
-        const struct settings_space *space = &kept.space;
-        const double most =
-            settings_share(space, (double)settings_duration_to(space, space->strongest_ua, NULL),
-                           (double)space->strongest_ua);
+    if (maker->whole.choose_cover && !*yes && status == STATUS_OK) {
         problem->space = maker->whole;
-        settings_fix_current(
-            &problem->space,
-            settings_current_for(&maker->whole, 0.0, fmin(1.0, target_n / kept.aim.target_n) * most * 0.95));
-        status = try_demand(maker, options, yes, why);
+        status = try_currents(maker, target_n / kept.aim.target_n, options, yes, why);
     }
     maker->problem = kept;
     return status;
@@ -109,6 +125,8 @@ static enum status find_contractions(struct maker *maker, struct plan *plan,
 enum status would_work_find(struct maker *maker, struct plan *plan, const struct plan_options *options,
                             struct message *why)
 {
+    maker->near = maker->found.policy;
+    maker->near_known = maker->found.outcome.met > 0;
     enum status status = find_contractions(maker, plan, options, why);
     if (status == STATUS_OK) status = find_target(maker, plan, options, why);
     if (status == STATUS_OK) status = find_hold(maker, plan, options, why);
