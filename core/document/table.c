@@ -179,6 +179,9 @@ static enum status read_channel(const struct table *table, const char *path, siz
     if (column >= 0) {
         const enum status status = table_number(table, path, row, (size_t)column, 1, 255, &channel, why);
         if (status != STATUS_OK) return status;
+        if (channel < floor(channel) || channel > floor(channel))
+            return status_fail(why, STATUS_DOCUMENT, "%s:%zu:%ld: channel: holds %g, may hold a whole number",
+                               path, table->line[row], column + 1, channel);
         pulses->channel[row] = (unsigned)channel;
     }
     if (muscle >= 0)
