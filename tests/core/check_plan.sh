@@ -59,6 +59,17 @@ got=$?
 [ "$got" -eq 0 ] || [ "$got" -eq 3 ] || { fail "recount of an edited plan: exit $got"; cat "$here/err"; }
 grep "mean_n" "$here/edited2.yaml" | cmp -s - "$here/means" && fail "shorter rests change no figure"
 
+# check: the ledger from the pulses, not from the document's copy; limits that a document loosens are the device's and the program's still
+expect 0 check "$here/plan.yaml" --json
+for key in within figures channel figure value unit limit source share approval; do
+    grep -q "\"$key\":" "$here/out" || fail "key $key is missing in the JSON of check"
+done
+grep -q '"within": true' "$here/out" || fail "a plan that was made is not within"
+grep -q "^NOT SIGNED" "$here/err" || fail "check of a plan does not say NOT SIGNED"
+sed 's/ limits: {current_ma: [0-9.e+]*/ limits: {current_ma: 20/' "$here/plan.yaml" >"$here/tight.yaml"
+expect 3 check "$here/tight.yaml"
+grep -q "peak current.*OVER" "$here/out" || fail "the figure that is broken is not shown as over"
+
 # its pulses: one row a pulse, none signed
 expect 0 pulses "$here/plan.yaml" -o "$here/pulses.csv"
 head -n 1 "$here/pulses.csv" | grep -q "^time_ms,duration_us,current_ma,approval" || fail "the header of the pulses"

@@ -11,7 +11,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum { DRAWS = 16, TRAIN_SILENCE_US = 250000, DUTY_AFTER_US = 60000000 };
+enum { DRAWS = 12, TRAIN_SILENCE_US = 250000, DUTY_AFTER_US = 60000000 };
 
 /* What one plan's pulses come to. */
 struct sums {
@@ -73,7 +73,7 @@ static void draw_limits(uint64_t *state, struct person_limits *limits)
 
 static struct demand draw_demand(uint64_t *state)
 {
-    struct demand demand = plans_demand(8);
+    struct demand demand = plans_demand(5);
     demand.target = draw_uniform(state, 30, 150);
     demand.hold_ms = floor(draw_uniform(state, 600, 3000));
     demand.rest_ms = floor(draw_uniform(state, 2000, 7000));
