@@ -1,5 +1,6 @@
-/* What the line did: the last frames, and how long it takes. The goal of this code: a fault can be read afterwards, and retries suit the
- * line. Retry timer: RFC 6298 with Karn's rule (no sample from a repeated request). */
+/* What the line did: the last frames, and how long it takes. The goal of this code: a fault can be read
+ * afterwards, and retries suit the line. Retry timer: RFC 6298 with Karn's rule (no sample from a repeated
+ * request). */
 #include "bridge/host/flight.h"
 
 #include "bridge/wire/message.h"
@@ -14,7 +15,8 @@ void flight_keep(struct flight *flight, bool out, uint64_t at_us, const struct f
 
 static void write_one(FILE *out, uint64_t at_us, bool to_device, const struct frame *frame)
 {
-    (void)fprintf(out, "%llu,%s,%s,%u,", (unsigned long long)at_us, to_device ? "out" : "in", message_name(frame->type), frame->sequence);
+    (void)fprintf(out, "%llu,%s,%s,%u,", (unsigned long long)at_us, to_device ? "out" : "in",
+                  message_name(frame->type), frame->sequence);
     for (unsigned i = 0; i < frame->size; i++) (void)fprintf(out, "%02x", frame->payload[i]);
     (void)fputc('\n', out);
 }
@@ -24,10 +26,13 @@ void flight_write(const struct flight *flight, FILE *out)
 {
     unsigned at[2];
     (void)fputs("time_us,direction,message,sequence,payload\n", out);
-    for (int d = 0; d < 2; d++) at[d] = flight->count[d] > FLIGHT_FRAMES ? flight->count[d] - FLIGHT_FRAMES : 0;
+    for (int d = 0; d < 2; d++)
+        at[d] = flight->count[d] > FLIGHT_FRAMES ? flight->count[d] - FLIGHT_FRAMES : 0;
     while (at[0] < flight->count[0] || at[1] < flight->count[1]) {
         int d = at[0] < flight->count[0] ? 0 : 1;
-        if (d == 0 && at[1] < flight->count[1] && flight->kept[1][at[1] % FLIGHT_FRAMES].at_us < flight->kept[0][at[0] % FLIGHT_FRAMES].at_us) d = 1;
+        if (d == 0 && at[1] < flight->count[1] &&
+            flight->kept[1][at[1] % FLIGHT_FRAMES].at_us < flight->kept[0][at[0] % FLIGHT_FRAMES].at_us)
+            d = 1;
         const unsigned slot = at[d]++ % FLIGHT_FRAMES;
         write_one(out, flight->kept[d][slot].at_us, d == 1, &flight->kept[d][slot].frame);
     }
@@ -54,7 +59,8 @@ uint64_t timing_retry_us(const struct timing *timing, unsigned tries)
     return (uint64_t)wait_us;
 }
 
-/* The shortest round trip tells the distance best; after 30 s a newer one may replace it, since clocks drift. */
+/* The shortest round trip tells the distance best; after 30 s a newer one may replace it, since clocks drift.
+ */
 void timing_clock(struct timing *timing, uint64_t sent_us, uint64_t got_us, uint64_t device_us)
 {
     const uint64_t taken_us = got_us - sent_us;

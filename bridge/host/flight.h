@@ -16,7 +16,8 @@ struct flight {
 void flight_keep(struct flight *flight, bool out, uint64_t at_us, const struct frame *frame);
 void flight_write(const struct flight *flight, FILE *out);
 
-/* Round trips: RFC 6298's estimator, bounded 20 to 100 ms (this link's), and the clocks' distance from the shortest of them. */
+/* Round trips: RFC 6298's estimator, bounded 20 to 100 ms (this link's), and the clocks' distance from the
+ * shortest of them. */
 struct timing {
     bool any;
     double smoothed_us, variation_us;

@@ -1,5 +1,5 @@
-/* The host. The goal of this code: every request answered or given up in time; the lease renewed only while someone looks after it; a stop
- * never behind a backlog; what was delivered told by the device itself. */
+/* The host. The goal of this code: every request answered or given up in time; the lease renewed only while
+ * someone looks after it; a stop never behind a backlog; what was delivered told by the device itself. */
 #include "bridge/host/host.h"
 
 #include "bridge/host/flight.h"
@@ -51,7 +51,8 @@ struct host {
     struct message_identity identity;
     bool identified, want_arm, want_start, want_stop, held, over_asked, zero_known, totals_exact;
     unsigned clocks_got, limits_done;
-    uint64_t arm_nonce, clock_due_us, renew_due_us, stop_due_us, echo_us, t0_device_us, t0_host_us, clear_wait_us;
+    uint64_t arm_nonce, clock_due_us, renew_due_us, stop_due_us, echo_us, t0_device_us, t0_host_us,
+        clear_wait_us;
     unsigned stops_sent, retries;
     uint32_t next_segment, acknowledged; /* next to send; all below are known to be held */
     enum device_cause cause;
@@ -66,7 +67,9 @@ struct host {
     case name: return text;
 const char *host_phase_text(enum host_phase phase)
 {
-    switch (phase) { HOST_PHASE_TABLE(PHASE_TEXT) }
+    switch (phase) {
+        HOST_PHASE_TABLE(PHASE_TEXT)
+    }
     return "unknown";
 }
 
@@ -98,7 +101,8 @@ __attribute__((format(printf, 2, 3))) static void fail(struct host *host, const 
     forget_requests(host);
     tell(host, (struct host_event){.kind = HOST_EVENT_FAULT, .text = host->end_text});
     /* whatever it was: ask for silence, three times, then leave */
-    const bool output_possible = host->phase >= HOST_LIMITING && host->phase <= HOST_STOPPING && !host->zero_known;
+    const bool output_possible =
+        host->phase >= HOST_LIMITING && host->phase <= HOST_STOPPING && !host->zero_known;
     if (output_possible && host->stops_sent == 0) {
         const uint8_t delimiter = 0;
         struct frame stop = {.type = MESSAGE_STOP, .session = host->session, .sequence = host->sequence++};
@@ -111,7 +115,8 @@ __attribute__((format(printf, 2, 3))) static void fail(struct host *host, const 
     enter(host, HOST_FAILED);
 }
 
-/* The host's own token bucket: at most AHEAD_OCTETS_MAX ahead of the line by its clock, so that a stop is not behind a backlog. */
+/* The host's own token bucket: at most AHEAD_OCTETS_MAX ahead of the line by its clock, so that a stop is not
+ * behind a backlog. */
 static void pump(struct host *host)
 {
     const uint64_t octet_us = 10000000 / host->options.baud + 1;
@@ -135,7 +140,8 @@ static void put_frame(struct host *host, const struct frame *frame, bool first)
     uint8_t octets[FRAME_WIRE_MAX];
     const size_t size = frame_encode(frame, octets);
     if (host->out_count + size > sizeof host->out) return; /* tried again */
-    /* an urgent frame goes before what waits, but not into a frame half sent: every frame begins and ends with a delimiter */
+    /* an urgent frame goes before what waits, but not into a frame half sent: every frame begins and ends
+     * with a delimiter */
     if (first) {
         size_t cut = 0;
         while (cut < host->out_count && host->out[cut] != 0) cut++;
@@ -173,7 +179,10 @@ static void ask(struct host *host, uint8_t type, const void *message)
     for (unsigned i = 0; i < IN_FLIGHT_MAX; i++) {
         struct request *request = &host->request[i];
         if (request->used) continue;
-        *request = (struct request){.used = true, .frame = {.type = type, .session = host->session, .sequence = host->sequence++}, .sent_us = host->now_us};
+        *request =
+            (struct request){.used = true,
+                             .frame = {.type = type, .session = host->session, .sequence = host->sequence++},
+                             .sent_us = host->now_us};
         if (!message_encode(&request->frame, message)) {
             request->used = false;
             fail(host, "a value of %s can not be carried", message_name(type));
@@ -197,7 +206,8 @@ static void retry(struct host *host)
         }
         request->repeated = true;
         host->retries++;
-        request->due_us = host->now_us + timing_retry_us(&host->timing, request->tries) + line_us(host, &request->frame);
+        request->due_us =
+            host->now_us + timing_retry_us(&host->timing, request->tries) + line_us(host, &request->frame);
         put_frame(host, &request->frame, false);
     }
 }
@@ -226,7 +236,8 @@ static void ask_limits(struct host *host)
 {
     const struct image *image = host->options.image;
     struct message_limits limits = {.count = image->header.channels};
-    (void)image_limits_encode(&image->limits[host->limits_done], image->header.channel[host->limits_done], limits.limits);
+    (void)image_limits_encode(&image->limits[host->limits_done], image->header.channel[host->limits_done],
+                              limits.limits);
     ask(host, MESSAGE_LIMITS, &limits);
 }
 
@@ -258,8 +269,10 @@ static void send_segments(struct host *host)
 {
     const struct image *image = host->options.image;
     unsigned asked = 0;
-    for (unsigned i = 0; i < IN_FLIGHT_MAX; i++) asked += host->request[i].used && host->request[i].frame.type == MESSAGE_SEGMENT;
-    while (asked < SEGMENTS_IN_FLIGHT && host->next_segment <= image->n && count_in_flight(host) < IN_FLIGHT_MAX - 2 && host->now_us >= host->clear_wait_us) {
+    for (unsigned i = 0; i < IN_FLIGHT_MAX; i++)
+        asked += host->request[i].used && host->request[i].frame.type == MESSAGE_SEGMENT;
+    while (asked < SEGMENTS_IN_FLIGHT && host->next_segment <= image->n &&
+           count_in_flight(host) < IN_FLIGHT_MAX - 2 && host->now_us >= host->clear_wait_us) {
         struct message_segment segment;
         const struct image_segment *next = &image->segments[host->next_segment - 1];
         (void)image_segment_encode(next, segment.segment);
@@ -283,7 +296,8 @@ static void send_stops(struct host *host)
 {
     if (host->now_us < host->stop_due_us) return;
     if (host->stops_sent >= STOP_TRIES) {
-        fail(host, "no answer to the stop request: output is unknown; it ends by itself with the lease, within 200 ms");
+        fail(host, "no answer to the stop request: output is unknown; it ends by itself with the lease, "
+                   "within 200 ms");
         return;
     }
     const uint8_t delimiter = 0;
@@ -318,7 +332,9 @@ static bool identity_matches(struct host *host)
     if (memcmp(host->identity.table, message_table_digest(), 8) != 0) {
         fail(host, "the device speaks another message table");
     } else if (memcmp(expected, host->identity.identity, sizeof expected) != 0) {
-        fail(host, "the device is not the one that was planned for: it says it is \"%.32s\", the plan is for \"%.32s\" with its channels, ranges, steps and phases",
+        fail(host,
+             "the device is not the one that was planned for: it says it is \"%.32s\", the plan is for "
+             "\"%.32s\" with its channels, ranges, steps and phases",
              (const char *)host->identity.identity, host->options.image->identity.unit);
     } else if (host->options.image->header.signoff == SIGNOFF_REHEARSAL && !host->identity.twin) {
         fail(host, "a rehearsal plays on a twin only, and the device does not say it is one");
@@ -363,10 +379,12 @@ static void take_report(struct host *host, const struct message_done *done)
     }
     host->totals_exact = true;
     uint64_t accounted = 0;
-    for (unsigned c = 1; c <= IMAGE_CHANNELS_MAX; c++) accounted += host->totals[c].pulses + host->totals[c].skipped;
-    if (host->cause == CAUSE_NONE && host->options.first == 1 && accounted != host->options.image->header.pulses) {
-        fail(host, "the device gave or skipped %llu of %llu pulses and names no cause; output is zero", (unsigned long long)accounted,
-             (unsigned long long)host->options.image->header.pulses);
+    for (unsigned c = 1; c <= IMAGE_CHANNELS_MAX; c++)
+        accounted += host->totals[c].pulses + host->totals[c].skipped;
+    if (host->cause == CAUSE_NONE && host->options.first == 1 &&
+        accounted != host->options.image->header.pulses) {
+        fail(host, "the device gave or skipped %llu of %llu pulses and names no cause; output is zero",
+             (unsigned long long)accounted, (unsigned long long)host->options.image->header.pulses);
     } else if (host->cause == CAUSE_NONE) {
         (void)snprintf(host->end_text, sizeof host->end_text, "every pulse was given or skipped as eased");
         enter(host, HOST_FINISHED);
@@ -374,7 +392,9 @@ static void take_report(struct host *host, const struct message_done *done)
         (void)snprintf(host->end_text, sizeof host->end_text, "stopped on request; output is zero");
         enter(host, HOST_STOPPED);
     } else {
-        const double at_ms = host->fault_told && host->t0_device_us ? (double)(int64_t)(host->fault.at_us - host->t0_device_us) / 1e3 : 0;
+        const double at_ms = host->fault_told && host->t0_device_us
+                                 ? (double)(int64_t)(host->fault.at_us - host->t0_device_us) / 1e3
+                                 : 0;
         if (host->fault_told)
             fail(host, "%s (%.0f ms after the start); output is zero", cause_text(host->cause), at_ms);
         else
@@ -389,17 +409,18 @@ static void take_done(struct host *host, uint8_t what, const struct message_done
     switch (what) {
     case MESSAGE_CLEAR: enter(host, HOST_SYNCING); break;
     case MESSAGE_LIMITS:
-        (void)image_limits_encode(&host->options.image->limits[host->limits_done], host->options.image->header.channel[host->limits_done], expected);
+        (void)image_limits_encode(&host->options.image->limits[host->limits_done],
+                                  host->options.image->header.channel[host->limits_done], expected);
         if (done->size != sizeof expected || memcmp(done->detail, expected, sizeof expected) != 0) {
-            fail(host, "the device holds stricter limits on channel %u than were signed: plan again for this device",
-                 host->options.image->header.channel[host->limits_done]);
+            fail(
+                host,
+                "the device holds stricter limits on channel %u than were signed: plan again for this device",
+                host->options.image->header.channel[host->limits_done]);
             return;
         }
         host->limits_done++;
         break;
-    case MESSAGE_ARM:
-        host->arm_nonce = done->size >= 8 ? octets_take(done->detail, &at, 8) : 0;
-        break;
+    case MESSAGE_ARM: host->arm_nonce = done->size >= 8 ? octets_take(done->detail, &at, 8) : 0; break;
     case MESSAGE_CONFIRM:
         host->echo_us = done->now_us;
         host->renew_due_us = host->now_us;
@@ -428,7 +449,8 @@ static void take_segment_done(struct host *host, const struct frame *asked)
 static void go_back(struct host *host, uint32_t next)
 {
     for (unsigned i = 0; i < IN_FLIGHT_MAX; i++)
-        if (host->request[i].used && host->request[i].frame.type == MESSAGE_SEGMENT) host->request[i].used = false;
+        if (host->request[i].used && host->request[i].frame.type == MESSAGE_SEGMENT)
+            host->request[i].used = false;
     host->next_segment = next;
 }
 
@@ -451,7 +473,8 @@ static void take_refusal(struct host *host, struct request *request, const struc
     } else if (refusal->what == MESSAGE_LIMITS && refusal->reason == REASON_RESET) {
         host->clear_wait_us = host->now_us + 100000;
     } else {
-        fail(host, "%s was refused: %s (%u)", message_name(refusal->what), reason_text(refusal->reason), refusal->detail);
+        fail(host, "%s was refused: %s (%u)", message_name(refusal->what), reason_text(refusal->reason),
+             refusal->detail);
     }
 }
 
@@ -475,8 +498,11 @@ static void take_sample(struct host *host, const struct message_sample *sample)
         size_t at = 12u * i;
         const uint64_t dt_us = octets_take(sample->readings, &at, 2) * 10;
         const int32_t force_mn = (int32_t)(uint32_t)octets_take(sample->readings, &at, 4);
-        if (host->phase < HOST_RUNNING || (int64_t)(sample->time_us + dt_us - host->t0_device_us) < 0) continue;
-        tell(host, (struct host_event){.kind = HOST_EVENT_FORCE, .at_us = sample->time_us + dt_us - host->t0_device_us, .force_n = force_mn / 1e3});
+        if (host->phase < HOST_RUNNING || (int64_t)(sample->time_us + dt_us - host->t0_device_us) < 0)
+            continue;
+        tell(host, (struct host_event){.kind = HOST_EVENT_FORCE,
+                                       .at_us = sample->time_us + dt_us - host->t0_device_us,
+                                       .force_n = force_mn / 1e3});
     }
 }
 
@@ -516,21 +542,27 @@ static void take_frame(struct host *host, const struct frame *frame)
     if (!message_decode(frame, &message)) return;
     if (frame->type != MESSAGE_IDENTITY && frame->session != host->session) return;
     struct request *request = request_of(host, frame->sequence);
-    const bool answer = frame->type == MESSAGE_DONE || frame->type == MESSAGE_REFUSAL || frame->type == MESSAGE_IDENTITY || frame->type == MESSAGE_CLOCK_IS;
+    const bool answer = frame->type == MESSAGE_DONE || frame->type == MESSAGE_REFUSAL ||
+                        frame->type == MESSAGE_IDENTITY || frame->type == MESSAGE_CLOCK_IS;
     if (!answer) return take_unasked(host, frame->type, &message);
-    if (request && !request->repeated) timing_round_trip(&host->timing, host->now_us - request->sent_us); /* Karn's rule */
+    if (request && !request->repeated)
+        timing_round_trip(&host->timing, host->now_us - request->sent_us); /* Karn's rule */
     if (frame->type == MESSAGE_REFUSAL) return take_refusal(host, request, &message.refusal);
-    if (frame->type == MESSAGE_DONE && (message.done.what == MESSAGE_RENEW || message.done.what == MESSAGE_STOP)) return take_done(host, message.done.what, &message.done);
+    if (frame->type == MESSAGE_DONE &&
+        (message.done.what == MESSAGE_RENEW || message.done.what == MESSAGE_STOP))
+        return take_done(host, message.done.what, &message.done);
     if (!request) return;
     const struct frame asked = request->frame;
     request->used = false;
-    if (frame->type == MESSAGE_IDENTITY && asked.type == MESSAGE_HELLO) take_identity(host, &message.identity);
+    if (frame->type == MESSAGE_IDENTITY && asked.type == MESSAGE_HELLO)
+        take_identity(host, &message.identity);
     if (frame->type == MESSAGE_CLOCK_IS && asked.type == MESSAGE_CLOCK) {
         timing_clock(&host->timing, message.clock_is.host_us, host->now_us, message.clock_is.device_us);
         host->clocks_got++;
     }
     if (frame->type == MESSAGE_DONE && asked.type == MESSAGE_SEGMENT) take_segment_done(host, &asked);
-    if (frame->type == MESSAGE_DONE && asked.type == message.done.what) take_done(host, asked.type, &message.done);
+    if (frame->type == MESSAGE_DONE && asked.type == message.done.what)
+        take_done(host, asked.type, &message.done);
 }
 
 static void take_octets(struct host *host)
@@ -540,7 +572,8 @@ static void take_octets(struct host *host)
     for (;;) {
         const long got = link_read(host->link, octets, sizeof octets);
         if (got < 0) {
-            fail(host, "the link is gone: output is unknown; it ends by itself with the lease, within 200 ms");
+            fail(host,
+                 "the link is gone: output is unknown; it ends by itself with the lease, within 200 ms");
             return;
         }
         for (long i = 0; i < got; i++)
@@ -556,7 +589,8 @@ static void step_setting_up(struct host *host)
         if (!in_flight(host, MESSAGE_HELLO)) ask_hello(host);
         break;
     case HOST_CLEARING:
-        if (!in_flight(host, MESSAGE_CLEAR)) ask(host, MESSAGE_CLEAR, &(struct message_clear){.cause = host->identity.cause});
+        if (!in_flight(host, MESSAGE_CLEAR))
+            ask(host, MESSAGE_CLEAR, &(struct message_clear){.cause = host->identity.cause});
         break;
     case HOST_SYNCING:
         if (host->clocks_got >= CLOCKS_FIRST)
@@ -614,7 +648,8 @@ void host_step(struct host *host, uint64_t now_us, bool alive)
         host->stop_due_us = host->now_us;
     }
     if (host->phase < HOST_ARMED) step_setting_up(host);
-    if (host->phase >= HOST_ARMED && host->phase <= HOST_RUNNING && !host->over_asked) step_armed(host, alive);
+    if (host->phase >= HOST_ARMED && host->phase <= HOST_RUNNING && !host->over_asked)
+        step_armed(host, alive);
     if (host->phase == HOST_STOPPING) send_stops(host);
     if (!host_is_over(host)) retry(host);
     if (!host_is_over(host)) pump(host);
@@ -625,10 +660,12 @@ uint64_t host_next_us(const struct host *host)
     return host_is_over(host) ? UINT64_MAX : host->now_us + (host->out_count ? 1000 : 5000);
 }
 
-enum status host_new(const struct host_options *options, struct link *link, uint64_t now_us, struct host **made, struct message *why)
+enum status host_new(const struct host_options *options, struct link *link, uint64_t now_us,
+                     struct host **made, struct message *why)
 {
     if (options->first < 1 || options->first >= options->image->n)
-        return status_fail(why, STATUS_USAGE, "the image has segments 1 to %u, not %u", options->image->n - 1, options->first);
+        return status_fail(why, STATUS_USAGE, "the image has segments 1 to %u, not %u", options->image->n - 1,
+                           options->first);
     struct host *host = calloc(1, sizeof *host);
     if (!host) return status_fail(why, STATUS_INTERNAL, "no memory for the host");
     host->options = *options;
@@ -645,20 +682,40 @@ void host_free(struct host *host)
     free(host);
 }
 
-void host_arm(struct host *host) { host->want_arm = true; }
-void host_start(struct host *host) { host->want_start = true; }
-void host_request_stop(struct host *host) { host->want_stop = true; }
-void host_hold(struct host *host, bool held) { host->held = held; }
+void host_arm(struct host *host)
+{
+    host->want_arm = true;
+}
+void host_start(struct host *host)
+{
+    host->want_start = true;
+}
+void host_request_stop(struct host *host)
+{
+    host->want_stop = true;
+}
+void host_hold(struct host *host, bool held)
+{
+    host->held = held;
+}
 
 void host_ease(struct host *host, unsigned channel, unsigned thousandths)
 {
     if (host->phase < HOST_ARMED || host->phase > HOST_RUNNING) return;
-    const struct message_ease ease = {.channel = (uint8_t)channel, .thousandths = (uint16_t)(thousandths > EASE_FULL ? EASE_FULL : thousandths)};
+    const struct message_ease ease = {.channel = (uint8_t)channel,
+                                      .thousandths =
+                                          (uint16_t)(thousandths > EASE_FULL ? EASE_FULL : thousandths)};
     ask(host, MESSAGE_EASE, &ease);
 }
 
-enum host_phase host_phase(const struct host *host) { return host->phase; }
-bool host_is_over(const struct host *host) { return host->phase >= HOST_FINISHED; }
+enum host_phase host_phase(const struct host *host)
+{
+    return host->phase;
+}
+bool host_is_over(const struct host *host)
+{
+    return host->phase >= HOST_FINISHED;
+}
 
 bool host_may_start(const struct host *host)
 {
@@ -666,16 +723,46 @@ bool host_may_start(const struct host *host)
     return host->phase == HOST_ARMED && host->acknowledged > (wanted < all ? wanted : all);
 }
 
-const char *host_end_text(const struct host *host) { return host->end_text; }
-enum device_cause host_cause(const struct host *host) { return host->cause; }
-bool host_output_known_zero(const struct host *host) { return host->zero_known; }
-const struct message_identity *host_identity(const struct host *host) { return host->identified ? &host->identity : NULL; }
-bool host_totals_exact(const struct host *host) { return host->totals_exact; }
-double host_clock_uncertainty_ms(const struct host *host) { return host->timing.clock_known ? (double)host->timing.best_us / 2e3 : (double)NAN; }
-double host_round_trip_ms(const struct host *host) { return host->timing.any ? host->timing.smoothed_us / 1e3 : (double)NAN; }
-unsigned host_retries(const struct host *host) { return host->retries; }
-uint64_t host_start_host_us(const struct host *host) { return host->phase >= HOST_RUNNING ? host->t0_host_us : 0; }
-void host_flight_write(const struct host *host, FILE *out) { flight_write(&host->flight, out); }
+const char *host_end_text(const struct host *host)
+{
+    return host->end_text;
+}
+enum device_cause host_cause(const struct host *host)
+{
+    return host->cause;
+}
+bool host_output_known_zero(const struct host *host)
+{
+    return host->zero_known;
+}
+const struct message_identity *host_identity(const struct host *host)
+{
+    return host->identified ? &host->identity : NULL;
+}
+bool host_totals_exact(const struct host *host)
+{
+    return host->totals_exact;
+}
+double host_clock_uncertainty_ms(const struct host *host)
+{
+    return host->timing.clock_known ? (double)host->timing.best_us / 2e3 : (double)NAN;
+}
+double host_round_trip_ms(const struct host *host)
+{
+    return host->timing.any ? host->timing.smoothed_us / 1e3 : (double)NAN;
+}
+unsigned host_retries(const struct host *host)
+{
+    return host->retries;
+}
+uint64_t host_start_host_us(const struct host *host)
+{
+    return host->phase >= HOST_RUNNING ? host->t0_host_us : 0;
+}
+void host_flight_write(const struct host *host, FILE *out)
+{
+    flight_write(&host->flight, out);
+}
 
 struct host_totals host_totals(const struct host *host, unsigned channel)
 {

@@ -1,5 +1,6 @@
-/* Host: connects to a stimulator (or its twin), arms one image, uploads it, starts it, keeps its lease, stops it. A state machine that is
- * stepped with the time: the same code runs on the real clock and on a simulated one. */
+/* Host: connects to a stimulator (or its twin), arms one image, uploads it, starts it, keeps its lease, stops
+ * it. A state machine that is stepped with the time: the same code runs on the real clock and on a simulated
+ * one. */
 #ifndef PULSEWRIGHT_BRIDGE_HOST_HOST_H
 #define PULSEWRIGHT_BRIDGE_HOST_HOST_H
 #include "bridge/link/link.h"
@@ -38,7 +39,13 @@ struct host_totals {
     uint64_t charge_pc;
 };
 
-enum host_event_kind { HOST_EVENT_PHASE, HOST_EVENT_TALLY, HOST_EVENT_FORCE, HOST_EVENT_DELIVERED, HOST_EVENT_FAULT };
+enum host_event_kind {
+    HOST_EVENT_PHASE,
+    HOST_EVENT_TALLY,
+    HOST_EVENT_FORCE,
+    HOST_EVENT_DELIVERED,
+    HOST_EVENT_FAULT
+};
 struct host_event {
     enum host_event_kind kind;
     uint64_t now_us;  /* host clock */
@@ -54,8 +61,8 @@ struct host_options {
     const struct image *image; /* outlives the host */
     uint32_t first;            /* index of the first segment to play, 1 .. */
     unsigned baud;
-    uint64_t nonce;            /* new for each session, from a source that never repeats */
-    uint64_t lead_us;          /* from the start's asking to the first pulse; 50 ms to 2 s, 0: 200 ms */
+    uint64_t nonce;   /* new for each session, from a source that never repeats */
+    uint64_t lead_us; /* from the start's asking to the first pulse; 50 ms to 2 s, 0: 200 ms */
     uint32_t totals_pulses[IMAGE_CHANNELS_MAX]; /* this person's so far, by the header's channels */
     uint64_t totals_charge_pc[IMAGE_CHANNELS_MAX];
     void (*event)(void *context, const struct host_event *event); /* NULL: none */
@@ -64,10 +71,11 @@ struct host_options {
 
 struct host;
 /* The link outlives the host. */
-enum status host_new(const struct host_options *options, struct link *link, uint64_t now_us, struct host **host, struct message *why);
+enum status host_new(const struct host_options *options, struct link *link, uint64_t now_us,
+                     struct host **host, struct message *why);
 void host_free(struct host *host);
-/* Runs what is due. Call often (at host_next_us at the latest and when octets arrived). `alive`: limits and the stop request are being
- * looked after; false: the lease is not renewed. */
+/* Runs what is due. Call often (at host_next_us at the latest and when octets arrived). `alive`: limits and
+ * the stop request are being looked after; false: the lease is not renewed. */
 void host_step(struct host *host, uint64_t now_us, bool alive);
 uint64_t host_next_us(const struct host *host);
 /* The three steps, each its own call: after READY, arm; after ARMED (enough segments held), start. */
@@ -80,7 +88,7 @@ void host_hold(struct host *host, bool held); /* held images: is the key held? *
 
 enum host_phase host_phase(const struct host *host);
 bool host_is_over(const struct host *host);
-bool host_may_start(const struct host *host); /* armed and the first segments held */
+bool host_may_start(const struct host *host);       /* armed and the first segments held */
 const char *host_end_text(const struct host *host); /* why it ended, in words */
 enum device_cause host_cause(const struct host *host);
 bool host_output_known_zero(const struct host *host); /* the device said it is safe */

@@ -1,5 +1,6 @@
-/* Links. The goal of this code: octets to and from a stimulator, never waiting, and never shared with another program. Serial ports by
- * libserialport; pseudo-terminals directly, since that library looks a port up in sysfs and asks for modem bits. */
+/* Links. The goal of this code: octets to and from a stimulator, never waiting, and never shared with another
+ * program. Serial ports by libserialport; pseudo-terminals directly, since that library looks a port up in
+ * sysfs and asks for modem bits. */
 #include "bridge/link/link.h"
 
 #include <errno.h>
@@ -48,11 +49,13 @@ static enum status make_exclusive(int descriptor, const char *address, struct me
     return STATUS_OK;
 }
 
-static enum status open_pseudo_terminal(const char *path, const char *address, struct link **made, struct message *why)
+static enum status open_pseudo_terminal(const char *path, const char *address, struct link **made,
+                                        struct message *why)
 {
     const int descriptor = open(path, O_RDWR | O_NOCTTY | O_NONBLOCK | O_CLOEXEC);
     struct termios attributes;
-    if (descriptor < 0) return status_fail(why, STATUS_DEVICE, "%s can not be opened: %s", address, strerror(errno));
+    if (descriptor < 0)
+        return status_fail(why, STATUS_DEVICE, "%s can not be opened: %s", address, strerror(errno));
     if (tcgetattr(descriptor, &attributes) != 0) {
         (void)close(descriptor);
         return status_fail(why, STATUS_DEVICE, "%s is no terminal", address);
@@ -73,20 +76,23 @@ static enum status open_pseudo_terminal(const char *path, const char *address, s
 static enum status port_fail(struct message *why, const char *address, const char *what)
 {
     char *text = sp_last_error_message();
-    const enum status status = status_fail(why, STATUS_DEVICE, "%s: %s: %s", address, what, text && *text ? text : "no such port");
+    const enum status status =
+        status_fail(why, STATUS_DEVICE, "%s: %s: %s", address, what, text && *text ? text : "no such port");
     sp_free_error_message(text);
     return status;
 }
 
-static enum status open_serial(const char *path, const char *address, unsigned baud, struct link **made, struct message *why)
+static enum status open_serial(const char *path, const char *address, unsigned baud, struct link **made,
+                               struct message *why)
 {
     struct link *link = new_link(LINK_SERIAL, why);
     if (!link) return STATUS_INTERNAL;
     enum status status = STATUS_OK;
     if (sp_get_port_by_name(path, &link->port) != SP_OK || sp_open(link->port, SP_MODE_READ_WRITE) != SP_OK)
         status = port_fail(why, address, "can not be opened");
-    else if (sp_set_baudrate(link->port, (int)baud) != SP_OK || sp_set_bits(link->port, 8) != SP_OK || sp_set_parity(link->port, SP_PARITY_NONE) != SP_OK ||
-             sp_set_stopbits(link->port, 1) != SP_OK || sp_set_flowcontrol(link->port, SP_FLOWCONTROL_NONE) != SP_OK)
+    else if (sp_set_baudrate(link->port, (int)baud) != SP_OK || sp_set_bits(link->port, 8) != SP_OK ||
+             sp_set_parity(link->port, SP_PARITY_NONE) != SP_OK || sp_set_stopbits(link->port, 1) != SP_OK ||
+             sp_set_flowcontrol(link->port, SP_FLOWCONTROL_NONE) != SP_OK)
         status = port_fail(why, address, "does not take 8 bits, no parity, one stop bit at this speed");
     else if (sp_get_port_handle(link->port, &link->descriptor) != SP_OK)
         status = port_fail(why, address, "has no handle");
@@ -106,12 +112,15 @@ enum status link_open(const char *address, unsigned baud, struct link **link, st
     if (strncmp(address, "pty:", 4) == 0) return open_pseudo_terminal(address + 4, address, link, why);
     if (strncmp(address, "serial:", 7) == 0) {
 #ifdef PULSEWRIGHT_TEST_BUILD
-        const char *allowed = getenv("PULSEWRIGHT_TEST_SERIAL"); /* a test build opens the one test link and no other port */
-        if (!allowed || strcmp(allowed, address + 7) != 0) return status_fail(why, STATUS_REFUSED, "a TEST BUILD opens no real port (%s)", address);
+        const char *allowed =
+            getenv("PULSEWRIGHT_TEST_SERIAL"); /* a test build opens the one test link and no other port */
+        if (!allowed || strcmp(allowed, address + 7) != 0)
+            return status_fail(why, STATUS_REFUSED, "a TEST BUILD opens no real port (%s)", address);
 #endif
         return open_serial(address + 7, address, baud, link, why);
     }
-    return status_fail(why, STATUS_USAGE, "\"%s\" is no address, may be serial:/dev/NAME, pty:/path or twin:", address);
+    return status_fail(why, STATUS_USAGE,
+                       "\"%s\" is no address, may be serial:/dev/NAME, pty:/path or twin:", address);
 }
 
 enum status link_of_master(int descriptor, struct link **link, struct message *why)
@@ -181,7 +190,8 @@ static long write_memory(struct channel *channel, const uint8_t *data, size_t si
 {
     size_t put = 0;
     if (channel->closed) return -1;
-    for (; put < size && channel->count < MEMORY_OCTETS; put++) channel->octets[(channel->head + channel->count++) % MEMORY_OCTETS] = data[put];
+    for (; put < size && channel->count < MEMORY_OCTETS; put++)
+        channel->octets[(channel->head + channel->count++) % MEMORY_OCTETS] = data[put];
     return (long)put;
 }
 
@@ -224,7 +234,8 @@ int link_descriptor(const struct link *link)
     return link->descriptor;
 }
 
-enum status link_list_ports(void (*each)(void *context, const char *address, const char *description), void *context, struct message *why)
+enum status link_list_ports(void (*each)(void *context, const char *address, const char *description),
+                            void *context, struct message *why)
 {
     struct sp_port **ports = NULL;
     if (sp_list_ports(&ports) != SP_OK) return port_fail(why, "ports", "can not be listed");

@@ -1,4 +1,5 @@
-/* The twin's muscle. The goal of this code: core's own model runs a delay behind the pulses, so that force is ready when it is asked for. */
+/* The twin's muscle. The goal of this code: core's own model runs a delay behind the pulses, so that force is
+ * ready when it is asked for. */
 #include "bridge/twin/muscle.h"
 
 #include "core/predict/predict.h"
@@ -47,9 +48,11 @@ static void run(struct twin_muscle *muscle, double until_ms)
     while (muscle->count) {
         const double at_ms = (double)(muscle->waiting[muscle->head].at_us - muscle->begin_us) / 1e3;
         if (at_ms > until_ms) break;
-        if (at_ms >= muscle->last_ms + 0.001 || !(muscle->last_ms > 0)) { /* two channels may meet on one muscle: the first counts */
+        if (at_ms >= muscle->last_ms + 0.001 ||
+            !(muscle->last_ms > 0)) { /* two channels may meet on one muscle: the first counts */
             predictor_advance(muscle->predictor, fmax(at_ms, predictor_time_ms(muscle->predictor)));
-            predictor_pulse(muscle->predictor, muscle->waiting[muscle->head].duration_us, muscle->waiting[muscle->head].current_ma);
+            predictor_pulse(muscle->predictor, muscle->waiting[muscle->head].duration_us,
+                            muscle->waiting[muscle->head].current_ma);
             muscle->last_ms = at_ms;
         }
         muscle->head = (muscle->head + 1) % WAITING_MAX;
@@ -64,7 +67,8 @@ void twin_muscle_pulse(struct twin_muscle *muscle, uint64_t at_us, double durati
         muscle->begun = true;
         muscle->begin_us = at_us;
     }
-    if (muscle->count == WAITING_MAX) run(muscle, (double)(muscle->waiting[muscle->head].at_us - muscle->begin_us) / 1e3);
+    if (muscle->count == WAITING_MAX)
+        run(muscle, (double)(muscle->waiting[muscle->head].at_us - muscle->begin_us) / 1e3);
     const unsigned slot = (muscle->head + muscle->count++) % WAITING_MAX;
     muscle->waiting[slot].at_us = at_us;
     muscle->waiting[slot].duration_us = duration_us;

@@ -1,4 +1,5 @@
-/* The twin's muscle: pulses in, force out, as a load cell would show it (delay and tone included). Private to bridge/twin. */
+/* The twin's muscle: pulses in, force out, as a load cell would show it (delay and tone included). Private to
+ * bridge/twin. */
 #ifndef PULSEWRIGHT_BRIDGE_TWIN_MUSCLE_H
 #define PULSEWRIGHT_BRIDGE_TWIN_MUSCLE_H
 #include "core/muscle/parameters.h"

@@ -1,5 +1,6 @@
-/* The twin in real time: a pseudo-terminal, a clock, a loop. The goal of this code: a host finds the same thing behind this address as
- * behind a serial port, survives nothing it would not survive there, and a twin never outlives the one that started it. */
+/* The twin in real time: a pseudo-terminal, a clock, a loop. The goal of this code: a host finds the same
+ * thing behind this address as behind a serial port, survives nothing it would not survive there, and a twin
+ * never outlives the one that started it. */
 #include "bridge/twin/twin.h"
 
 #include <errno.h>
@@ -32,12 +33,15 @@ static enum status open_terminal(struct terminal *terminal, struct message *why)
     char name[200];
     struct termios attributes;
     terminal->master = posix_openpt(O_RDWR | O_NOCTTY | O_CLOEXEC | O_NONBLOCK);
-    if (terminal->master < 0 || grantpt(terminal->master) != 0 || unlockpt(terminal->master) != 0 || ptsname_r(terminal->master, name, sizeof name) != 0)
+    if (terminal->master < 0 || grantpt(terminal->master) != 0 || unlockpt(terminal->master) != 0 ||
+        ptsname_r(terminal->master, name, sizeof name) != 0)
         return status_fail(why, STATUS_DEVICE, "no pseudo-terminal: %s", strerror(errno));
     terminal->slave = open(name, O_RDWR | O_NOCTTY | O_CLOEXEC);
-    if (terminal->slave < 0 || tcgetattr(terminal->slave, &attributes) != 0) return status_fail(why, STATUS_DEVICE, "%s: %s", name, strerror(errno));
+    if (terminal->slave < 0 || tcgetattr(terminal->slave, &attributes) != 0)
+        return status_fail(why, STATUS_DEVICE, "%s: %s", name, strerror(errno));
     cfmakeraw(&attributes);
-    if (tcsetattr(terminal->slave, TCSANOW, &attributes) != 0) return status_fail(why, STATUS_DEVICE, "%s: %s", name, strerror(errno));
+    if (tcsetattr(terminal->slave, TCSANOW, &attributes) != 0)
+        return status_fail(why, STATUS_DEVICE, "%s: %s", name, strerror(errno));
     (void)snprintf(terminal->address, sizeof terminal->address, "pty:%s", name);
     return STATUS_OK;
 }
@@ -53,15 +57,16 @@ static void loop(struct twin *twin, struct link *wire, const volatile sig_atomic
         struct pollfd descriptor = {.fd = link_descriptor(wire), .events = POLLIN};
         const struct timespec wait = {.tv_sec = 0, .tv_nsec = (long)wait_us * 1000};
         const int ready = ppoll(&descriptor, 1, &wait, NULL);
-        if (ready > 0 && (descriptor.revents & POLLIN)) { /* octets come at the line's speed: a short pause lets them gather */
+        if (ready > 0 && (descriptor.revents &
+                          POLLIN)) { /* octets come at the line's speed: a short pause lets them gather */
             const struct timespec pause = {.tv_nsec = 300000};
             (void)nanosleep(&pause, NULL);
         }
     }
 }
 
-enum status twin_run(const struct twin_options *options, void (*announce)(void *context, const char *address), void *context,
-                     const volatile sig_atomic_t *stop, struct message *why)
+enum status twin_run(const struct twin_options *options, void (*announce)(void *context, const char *address),
+                     void *context, const volatile sig_atomic_t *stop, struct message *why)
 {
     struct terminal terminal = {-1, -1, ""};
     struct link *wire = NULL;
@@ -111,7 +116,8 @@ static void run_child(const struct twin_options *options, int out, pid_t parent)
     _exit(0);
 }
 
-enum status twin_start_process(const struct twin_options *options, char address[256], int *process, struct message *why)
+enum status twin_start_process(const struct twin_options *options, char address[256], int *process,
+                               struct message *why)
 {
     int ends[2];
     char text[MESSAGE_SIZE] = "";

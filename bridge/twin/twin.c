@@ -1,5 +1,6 @@
-/* The twin: the device's own code around a virtual muscle. The goal of this code: what is rehearsed runs the same wire, limits, lease and
- * pulse clock as a board would. The hardware timer is modelled: due events run in order, at their own time; octets move at the baud. */
+/* The twin: the device's own code around a virtual muscle. The goal of this code: what is rehearsed runs the
+ * same wire, limits, lease and pulse clock as a board would. The hardware timer is modelled: due events run
+ * in order, at their own time; octets move at the baud. */
 #include "bridge/twin/twin.h"
 
 #include "bridge/stimulator/device.h"
@@ -43,16 +44,20 @@ struct twin {
     } delayed;
 };
 
-static bool give_pulse(void *context, uint64_t now_us, uint8_t channel, uint32_t current_ua, uint16_t duration_us, uint16_t interphase_us)
+static bool give_pulse(void *context, uint64_t now_us, uint8_t channel, uint32_t current_ua,
+                       uint16_t duration_us, uint16_t interphase_us)
 {
     struct twin *twin = context;
     (void)interphase_us;
     twin->last_ua[channel] = current_ua;
     if (twin->log) {
-        (void)fprintf(twin->log, "%llu,%u,%u,%lu\n", (unsigned long long)now_us, channel, duration_us, (unsigned long)current_ua);
+        (void)fprintf(twin->log, "%llu,%u,%u,%lu\n", (unsigned long long)now_us, channel, duration_us,
+                      (unsigned long)current_ua);
         if (fflush(twin->log) != 0) twin->log_failed = true;
     }
-    if (twin->drives[channel]) twin_muscle_pulse(twin->muscle[twin->muscle_of[channel]], now_us, duration_us, (double)current_ua / 1e3);
+    if (twin->drives[channel])
+        twin_muscle_pulse(twin->muscle[twin->muscle_of[channel]], now_us, duration_us,
+                          (double)current_ua / 1e3);
     return !twin->log_failed; /* a log that can not be written ends the output: nothing unseen is given */
 }
 
@@ -98,8 +103,8 @@ static void send(void *context, const uint8_t *octets, size_t size)
 {
     struct twin *twin = context;
     uint8_t copy[FRAME_WIRE_MAX];
-    struct fault_entry *fault =
-        fault_due(&twin->faults, twin->device.now_us - twin->begin_us, true, 1u << FAULT_DROP | 1u << FAULT_CORRUPT | 1u << FAULT_DUPLICATE);
+    struct fault_entry *fault = fault_due(&twin->faults, twin->device.now_us - twin->begin_us, true,
+                                          1u << FAULT_DROP | 1u << FAULT_CORRUPT | 1u << FAULT_DUPLICATE);
     memcpy(copy, octets, size);
     if (fault) {
         fault->done = true;
@@ -123,30 +128,44 @@ static void watchdog(void *context)
 /* The built-in bench stimulator: invented. */
 static struct stimulator built_in(void)
 {
-    struct stimulator stimulator = {.name = "twin", .unit = "TWIN", .channels = 8, .current_ma = {0, 140, 0.5}, .duration_us = {20, 1000, 5},
-                                    .frequency_pps = {1, 120, 1}, .gap_us_min = 2000, .recovery_us = (double)NAN, .interphase_us = 100,
-                                    .mismatch_percent = 1, .independent = true, .queue_segments = DEVICE_QUEUE_MAX, .compliance_v = 200,
-                                    .load_ohm = 1000, .baud = 115200};
+    struct stimulator stimulator = {.name = "twin",
+                                    .unit = "TWIN",
+                                    .channels = 8,
+                                    .current_ma = {0, 140, 0.5},
+                                    .duration_us = {20, 1000, 5},
+                                    .frequency_pps = {1, 120, 1},
+                                    .gap_us_min = 2000,
+                                    .recovery_us = (double)NAN,
+                                    .interphase_us = 100,
+                                    .mismatch_percent = 1,
+                                    .independent = true,
+                                    .queue_segments = DEVICE_QUEUE_MAX,
+                                    .compliance_v = 200,
+                                    .load_ohm = 1000,
+                                    .baud = 115200};
     return stimulator;
 }
 
 struct image_identity twin_identity(const struct stimulator *stimulator)
 {
     const struct train_grid grid = stimulator_grid(stimulator);
-    struct image_identity identity = {.channels = (uint8_t)stimulator->channels,
-                                      .capacitor_balanced = stimulator->capacitor_balanced,
-                                      .independent = stimulator->independent,
-                                      .current_from_ua = grid.current_from_ua,
-                                      .current_to_ua = (uint32_t)lround(stimulator->current_ma.to * 1e3),
-                                      .current_step_ua = grid.current_step_ua,
-                                      .duration_from_us = grid.duration_from_us,
-                                      .duration_to_us = (uint16_t)lround(stimulator->duration_us.to),
-                                      .duration_step_us = grid.duration_step_us,
-                                      .interphase_us = (uint16_t)lround(stimulator->interphase_us),
-                                      .recovery_us = stimulator->capacitor_balanced ? (uint32_t)lround(stimulator->recovery_us) : 0};
-    (void)snprintf(identity.unit, sizeof identity.unit, "%.31s", stimulator->unit[0] ? stimulator->unit : stimulator->name);
+    struct image_identity identity = {
+        .channels = (uint8_t)stimulator->channels,
+        .capacitor_balanced = stimulator->capacitor_balanced,
+        .independent = stimulator->independent,
+        .current_from_ua = grid.current_from_ua,
+        .current_to_ua = (uint32_t)lround(stimulator->current_ma.to * 1e3),
+        .current_step_ua = grid.current_step_ua,
+        .duration_from_us = grid.duration_from_us,
+        .duration_to_us = (uint16_t)lround(stimulator->duration_us.to),
+        .duration_step_us = grid.duration_step_us,
+        .interphase_us = (uint16_t)lround(stimulator->interphase_us),
+        .recovery_us = stimulator->capacitor_balanced ? (uint32_t)lround(stimulator->recovery_us) : 0};
+    (void)snprintf(identity.unit, sizeof identity.unit, "%.31s",
+                   stimulator->unit[0] ? stimulator->unit : stimulator->name);
     for (size_t g = 0; g < stimulator->returns; g++)
-        for (size_t i = 0; i < stimulator->return_group[g].channels; i++) identity.return_group[stimulator->return_group[g].channel[i] - 1] = (uint8_t)(g + 1);
+        for (size_t i = 0; i < stimulator->return_group[g].channels; i++)
+            identity.return_group[stimulator->return_group[g].channel[i] - 1] = (uint8_t)(g + 1);
     return identity;
 }
 
@@ -154,12 +173,15 @@ struct image_identity twin_identity(const struct stimulator *stimulator)
 static enum status hook_muscles(struct twin *twin, const struct twin_options *options, struct message *why)
 {
     const char *name[STIMULATOR_CHANNELS_MAX] = {0};
-    const unsigned channels = options->hookup ? (unsigned)options->hookup->channels : twin->build.identity.channels;
+    const unsigned channels =
+        options->hookup ? (unsigned)options->hookup->channels : twin->build.identity.channels;
     for (unsigned i = 0; i < channels; i++) {
         const unsigned channel = options->hookup ? options->hookup->channel[i].channel : i + 1;
-        const struct profile_muscle *muscle = profile_muscle(options->profile, options->hookup ? options->hookup->channel[i].muscle : options->muscle, why);
+        const struct profile_muscle *muscle = profile_muscle(
+            options->profile, options->hookup ? options->hookup->channel[i].muscle : options->muscle, why);
         if (!muscle) return STATUS_DOCUMENT;
-        if (channel > IMAGE_CHANNELS_MAX) return status_fail(why, STATUS_DOCUMENT, "channel %u is beyond %d", channel, IMAGE_CHANNELS_MAX);
+        if (channel > IMAGE_CHANNELS_MAX)
+            return status_fail(why, STATUS_DOCUMENT, "channel %u is beyond %d", channel, IMAGE_CHANNELS_MAX);
         unsigned which = 0;
         while (which < twin->muscles && strcmp(name[which], muscle->name) != 0) which++;
         if (which == twin->muscles) {
@@ -180,12 +202,14 @@ static enum status open_log(struct twin *twin, const char *path, struct message 
 {
     if (!path) return STATUS_OK;
     twin->log = fopen(path, "we");
-    if (!twin->log || fprintf(twin->log, "time_us,channel,duration_us,current_ua\n") < 0 || fflush(twin->log) != 0)
+    if (!twin->log || fprintf(twin->log, "time_us,channel,duration_us,current_ua\n") < 0 ||
+        fflush(twin->log) != 0)
         return status_fail(why, STATUS_USAGE, "%s: can not be written: %s", path, strerror(errno));
     return STATUS_OK;
 }
 
-enum status twin_new(const struct twin_options *options, struct link *wire, uint64_t now_us, struct twin **made, struct message *why)
+enum status twin_new(const struct twin_options *options, struct link *wire, uint64_t now_us,
+                     struct twin **made, struct message *why)
 {
     const struct stimulator bench = built_in();
     const struct stimulator *stimulator = options->stimulator ? options->stimulator : &bench;
@@ -197,16 +221,20 @@ enum status twin_new(const struct twin_options *options, struct link *wire, uint
     twin->baud = stimulator->baud;
     twin->fresh = options->seed;
     twin->begin_us = twin->in_us = twin->out_us = now_us;
-    twin->build = (struct device_build){.identity = twin_identity(stimulator),
-                                        .version = 1,
-                                        .queue_segments = (uint16_t)(stimulator->queue_segments < DEVICE_QUEUE_MAX ? stimulator->queue_segments : DEVICE_QUEUE_MAX),
-                                        .twin = true,
+    twin->build =
+        (struct device_build){.identity = twin_identity(stimulator),
+                              .version = 1,
+                              .queue_segments = (uint16_t)(stimulator->queue_segments < DEVICE_QUEUE_MAX
+                                                               ? stimulator->queue_segments
+                                                               : DEVICE_QUEUE_MAX),
+                              .twin = true,
 #ifdef PULSEWRIGHT_TEST_BUILD
-                                        .takes_both = true,
+                              .takes_both = true,
 #endif
-                                        .force_sensor = options->profile != NULL};
+                              .force_sensor = options->profile != NULL};
     limits_effective(&dose_device, NULL, &twin->build.own_limits, source);
-    twin->build.own_limits.slew_memory_ms = dose_program_limits().slew_memory_ms; /* a person's, not a device's */
+    twin->build.own_limits.slew_memory_ms =
+        dose_program_limits().slew_memory_ms; /* a person's, not a device's */
     twin->platform = (struct platform){.context = twin,
                                        .pulse = give_pulse,
                                        .measured = measured,
@@ -218,7 +246,8 @@ enum status twin_new(const struct twin_options *options, struct link *wire, uint
                                        .watchdog = watchdog};
     enum status status = options->profile ? hook_muscles(twin, options, why) : STATUS_OK;
     if (status == STATUS_OK) status = open_log(twin, options->log_path, why);
-    if (status == STATUS_OK && options->faults_path) status = fault_schedule_load(options->faults_path, &twin->faults, why);
+    if (status == STATUS_OK && options->faults_path)
+        status = fault_schedule_load(options->faults_path, &twin->faults, why);
     if (status != STATUS_OK) {
         twin_free(twin);
         return status;
@@ -241,7 +270,8 @@ void twin_free(struct twin *twin)
 static size_t line_octets(const struct twin *twin, uint64_t *used_us, uint64_t now_us, size_t wanted)
 {
     const uint64_t octet_us = 10000000 / twin->baud + 1;
-    if (now_us > *used_us + 5000) *used_us = now_us - 5000; /* an idle line saves nothing up but a small buffer */
+    if (now_us > *used_us + 5000)
+        *used_us = now_us - 5000; /* an idle line saves nothing up but a small buffer */
     size_t octets = (size_t)((now_us - *used_us) / octet_us);
     if (octets > wanted) octets = wanted;
     *used_us += octets * octet_us;
@@ -250,13 +280,15 @@ static size_t line_octets(const struct twin *twin, uint64_t *used_us, uint64_t n
 
 static void hand_frame(struct twin *twin, uint64_t now_us)
 {
-    struct fault_entry *fault = fault_due(&twin->faults, now_us - twin->begin_us, false,
-                                          1u << FAULT_DROP | 1u << FAULT_CORRUPT | 1u << FAULT_DUPLICATE | 1u << FAULT_DELAY);
+    struct fault_entry *fault =
+        fault_due(&twin->faults, now_us - twin->begin_us, false,
+                  1u << FAULT_DROP | 1u << FAULT_CORRUPT | 1u << FAULT_DUPLICATE | 1u << FAULT_DELAY);
     const bool empty = twin->frame_size <= 1;
     if (fault && !empty) {
         fault->done = true;
         if (fault->action == FAULT_CORRUPT) twin->frame[twin->frame_size / 2] ^= 0x55;
-        if (fault->action == FAULT_DUPLICATE) device_octets(&twin->device, now_us, twin->frame, twin->frame_size);
+        if (fault->action == FAULT_DUPLICATE)
+            device_octets(&twin->device, now_us, twin->frame, twin->frame_size);
         if (fault->action == FAULT_DELAY) {
             memcpy(twin->delayed.octets, twin->frame, twin->frame_size);
             twin->delayed.size = twin->frame_size;
@@ -304,11 +336,15 @@ static void apply_faults(struct twin *twin, uint64_t now_us)
     const uint64_t since_us = now_us - twin->begin_us;
     for (int direction = 0; direction < 2; direction++) {
         struct fault_entry *fault;
-        while ((fault = fault_due(&twin->faults, since_us, direction == 1, 1u << FAULT_CUT | 1u << FAULT_STALL | 1u << FAULT_RESET | 1u << FAULT_INTERLOCK))) {
+        while ((fault = fault_due(&twin->faults, since_us, direction == 1,
+                                  1u << FAULT_CUT | 1u << FAULT_STALL | 1u << FAULT_RESET |
+                                      1u << FAULT_INTERLOCK))) {
             fault->done = true;
             if (fault->action == FAULT_CUT) twin->cut = true;
-            if (fault->action == FAULT_STALL) twin->stalled_until_us = now_us + (uint64_t)(fault->argument * 1e3);
-            if (fault->action == FAULT_RESET) device_init(&twin->device, &twin->build, &twin->platform, now_us);
+            if (fault->action == FAULT_STALL)
+                twin->stalled_until_us = now_us + (uint64_t)(fault->argument * 1e3);
+            if (fault->action == FAULT_RESET)
+                device_init(&twin->device, &twin->build, &twin->platform, now_us);
             if (fault->action == FAULT_INTERLOCK) twin->interlock_open = true;
         }
     }

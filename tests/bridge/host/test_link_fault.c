@@ -1,5 +1,5 @@
-/* Host and device on a simulated clock: survived faults leave every pulse as planned; fatal ones end the output within the lease and a
- * pulse, the cause is told, nothing resumes. */
+/* Host and device on a simulated clock: survived faults leave every pulse as planned; fatal ones end the
+ * output within the lease and a pulse, the cause is told, nothing resumes. */
 #include "../simulation.h"
 
 enum { LEASE_US = 200000, PERIOD_US = 33334 };
@@ -21,7 +21,8 @@ static void whole_image_is_delivered_to_the_pulse(void **state)
     simulation_end(&s);
 }
 
-/* Any one frame dropped, corrupted, duplicated or delayed to 80 ms, at drawn moments, either way: delivered = plan. Seed 20261201. */
+/* Any one frame dropped, corrupted, duplicated or delayed to 80 ms, at drawn moments, either way: delivered =
+ * plan. Seed 20261201. */
 static void any_single_fault_of_the_line_is_survived(void **state)
 {
     (void)state;
@@ -33,7 +34,8 @@ static void any_single_fault_of_the_line_is_survived(void **state)
         uint64_t first_us = 0, last_us = 0;
         const int action = i % 4;
         const char *direction = action == 3 || rand() % 2 ? "in" : "out";
-        (void)snprintf(csv, sizeof csv, "at_ms,direction,action,argument\n%d,%s,%s,%d\n", rand() % 9000, direction, actions[action], 10 + rand() % 71);
+        (void)snprintf(csv, sizeof csv, "at_ms,direction,action,argument\n%d,%s,%s,%d\n", rand() % 9000,
+                       direction, actions[action], 10 + rand() % 71);
         simulation_make_image(&s, 6, 20);
         simulation_begin(&s, csv, NULL);
         simulation_run(&s, s.now_us + 40000000);
@@ -71,7 +73,10 @@ static void fatal_faults_end_in_zero_and_are_told(void **state)
     (void)state;
     static const struct {
         const char *row, *told;
-    } faults[] = {{"3000,in,cut,\n", "no answer"}, {"3000,in,stall,400\n", "quiet"}, {"3000,in,reset,\n", "no answer"}, {"3000,in,interlock,\n", "interlock"}};
+    } faults[] = {{"3000,in,cut,\n", "no answer"},
+                  {"3000,in,stall,400\n", "quiet"},
+                  {"3000,in,reset,\n", "no answer"},
+                  {"3000,in,interlock,\n", "interlock"}};
     for (size_t i = 0; i < sizeof faults / sizeof faults[0]; i++) {
         struct simulation s = {0};
         char csv[120];
@@ -82,7 +87,8 @@ static void fatal_faults_end_in_zero_and_are_told(void **state)
         const uint64_t begin_us = s.now_us;
         simulation_run(&s, s.now_us + 30000000);
         assert_int_equal(host_phase(s.host), HOST_FAILED);
-        if (!strstr(host_end_text(s.host), faults[i].told)) print_error("%s told: %s\n", faults[i].row, host_end_text(s.host));
+        if (!strstr(host_end_text(s.host), faults[i].told))
+            print_error("%s told: %s\n", faults[i].row, host_end_text(s.host));
         assert_non_null(strstr(host_end_text(s.host), faults[i].told));
         assert_true(simulation_delivered(&s, true, &first_us, &last_us) > 0);
         assert_true(last_us <= begin_us + 3000000 + LEASE_US + PERIOD_US + 1000);
@@ -154,7 +160,8 @@ static void twins_muscle_answers_with_force(void **state)
     struct simulation s = {0};
     struct profile profile;
     struct message why;
-    assert_status(profile_load(PULSEWRIGHT_SOURCE "/profiles/people/p-001.yaml", &profile, &why), STATUS_OK, &why);
+    assert_status(profile_load(PULSEWRIGHT_SOURCE "/profiles/people/p-001.yaml", &profile, &why), STATUS_OK,
+                  &why);
     simulation_make_image(&s, 3, 30);
     simulation_begin(&s, NULL, &profile);
     simulation_run(&s, s.now_us + 30000000);
