@@ -238,17 +238,31 @@ static void print_block(const struct plan_block *block)
            plan_why_text(block->why.reason));
 }
 
+static void print_would_work(const struct plan *plan)
+{
+    const double target = plan->would_work.largest_target_n, hold = plan->would_work.longest_hold_ms;
+    const unsigned contractions = plan->would_work.most_contractions;
+    const bool any = !isnan(target) || !isnan(hold) || contractions > 0;
+    printf("Would work: %s", any ? "" : "nothing that was tried");
+    if (!isnan(target))
+        printf("a target of %.5g N%s", target, !isnan(hold) || contractions > 0 ? ", or " : "");
+    if (!isnan(hold)) printf("a hold of %.5g ms%s", hold, contractions > 0 ? ", or " : "");
+    if (contractions > 0) printf("%u contraction%s", contractions, contractions == 1 ? "" : "s");
+    printf("\n");
+}
+
 void plan_output_text(const struct plan *plan)
 {
     printf("%s\n", plan->verdict);
-    if (plan->first_miss)
-        printf("First miss: contraction %u, %s (%.4g %s against %.4g)\n", plan->first_miss,
+    if (plan->first_miss && isnan(plan->first_miss_why.value)) /* a hold that never settles has no rise */
+        printf("First miss: contraction %u, %s (the force never settles; %.4g %s allowed)\n",
+               plan->first_miss, plan_why_text(plan->first_miss_why.reason), plan->first_miss_why.limit,
+               plan->first_miss_why.unit);
+    else if (plan->first_miss)
+        printf("First miss: contraction %u, %s (%.5g %s against %.5g)\n", plan->first_miss,
                plan_why_text(plan->first_miss_why.reason), plan->first_miss_why.value,
                plan->first_miss_why.unit, plan->first_miss_why.limit);
-    if (!plan->feasible && plan->demand.contractions > 0)
-        printf("Would work: target up to %.4g N, or hold up to %.4g ms, or %u contractions\n",
-               plan->would_work.largest_target_n, plan->would_work.longest_hold_ms,
-               plan->would_work.most_contractions);
+    if (!plan->feasible && plan->demand.contractions > 0) print_would_work(plan);
     for (size_t c = 0; c < plan->channels; c++) {
         const struct plan_channel *channel = &plan->channel[c];
         printf("Channel %u, %s%s%s\n", channel->channel, channel->muscle, channel->side[0] ? ", " : "",
