@@ -303,6 +303,10 @@ enum status plan_output_ready(const struct arguments *arguments)
 {
     static const char *const outputs[] = {"-o", "--picture"};
     if (!argument(arguments, "-o")) return command_fail(arguments, STATUS_USAGE, "-o is needed");
+#ifndef PICTURES
+    if (argument(arguments, "--picture"))
+        return command_fail(arguments, STATUS_USAGE, "--picture: this build draws no figures");
+#endif
     for (size_t i = 0; i < sizeof outputs / sizeof *outputs && !argument_given(arguments, "--replace"); i++) {
         const char *path = argument(arguments, outputs[i]);
         if (path && access(path, F_OK) == 0)
