@@ -14,14 +14,14 @@ struct making {
 static uint64_t whole_down(double value)
 {
     if (!(value > 0)) return 0;
-    const double floored = floor(value * (1 + 1e-12));
+    const double floored = floor(value + 1e-3);
     return floored >= 9007199254740992.0 ? (uint64_t)9007199254740992 : (uint64_t)floored;
 }
 
 static uint64_t whole_up(double value)
 {
     if (!(value > 0)) return 0;
-    return (uint64_t)ceil(value * (1 - 1e-12));
+    return (uint64_t)ceil(value - 1e-3);
 }
 
 /* Takes a value where it is stricter than what stands, or nothing stood. */
