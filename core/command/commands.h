@@ -11,7 +11,7 @@
     X(curves)                                                                                                \
     X(plan)                                                                                                  \
     X(pulses)                                                                                                \
-    X(recount)
+    X(sheet) X(recount)
 
 #define COMMAND_DECLARE(name) extern const struct command command_##name;
 PULSEWRIGHT_COMMANDS(COMMAND_DECLARE)

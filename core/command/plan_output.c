@@ -3,8 +3,6 @@
 #include "core/command/plan_output.h"
 #ifdef PULSEWRIGHT_FIGURES
 #include "core/figure/figure.h"
-#endif
-#ifdef FIGURE_SESSION /* figure.h says that the session can be drawn */
 #define PICTURES 1
 #endif
 

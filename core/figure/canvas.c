@@ -1,14 +1,17 @@
-/* Canvas. The goal of this code: one look for screen, PNG and print; text never on text; readable in black and white. */
+/* Canvas. The goal of this code: one look for screen, PNG and print; text never on text; readable in black
+ * and white. */
 #include "core/figure/canvas.h"
 
 #include <math.h>
 #include <pango/pangocairo.h>
 #include <stdio.h>
 
-static const struct colour light_inks[INKS] = {{1, 1, 1},          {0.10, 0.11, 0.13}, {0.34, 0.36, 0.40}, {0.88, 0.89, 0.91},
-                                               {0.0, 0.38, 0.62},  {0.72, 0.28, 0.0},  {0.0, 0.44, 0.32},  {0.0, 0.38, 0.62}};
-static const struct colour dark_inks[INKS] = {{0.09, 0.10, 0.12}, {0.93, 0.94, 0.95}, {0.66, 0.69, 0.73}, {0.22, 0.24, 0.27},
-                                              {0.40, 0.74, 0.95}, {0.98, 0.58, 0.28}, {0.30, 0.80, 0.62}, {0.40, 0.74, 0.95}};
+static const struct colour light_inks[INKS] = {{1, 1, 1},          {0.10, 0.11, 0.13}, {0.34, 0.36, 0.40},
+                                               {0.88, 0.89, 0.91}, {0.0, 0.38, 0.62},  {0.72, 0.28, 0.0},
+                                               {0.0, 0.44, 0.32},  {0.0, 0.38, 0.62}};
+static const struct colour dark_inks[INKS] = {{0.09, 0.10, 0.12}, {0.93, 0.94, 0.95}, {0.66, 0.69, 0.73},
+                                              {0.22, 0.24, 0.27}, {0.40, 0.74, 0.95}, {0.98, 0.58, 0.28},
+                                              {0.30, 0.80, 0.62}, {0.40, 0.74, 0.95}};
 
 struct colour ink_colour(enum ink ink, bool dark)
 {
@@ -33,7 +36,8 @@ double colour_contrast(struct colour a, struct colour b)
 
 struct canvas canvas_begin(cairo_t *cairo, double width, double height, const struct figure_style *style)
 {
-    struct canvas canvas = {.cairo = cairo, .dark = style && style->dark, .scale = style && style->scale > 0 ? style->scale : 1};
+    struct canvas canvas = {
+        .cairo = cairo, .dark = style && style->dark, .scale = style && style->scale > 0 ? style->scale : 1};
     canvas_ink(&canvas, INK_PAPER, 1);
     cairo_rectangle(cairo, 0, 0, width, height);
     cairo_fill(cairo);
@@ -72,7 +76,8 @@ struct box canvas_text_size(const struct canvas *canvas, const char *text, doubl
     return (struct box){0, 0, width, height};
 }
 
-struct box canvas_text(struct canvas *canvas, const char *text, double x, double y, enum text_place place, double size, bool bold)
+struct box canvas_text(struct canvas *canvas, const char *text, double x, double y, enum text_place place,
+                       double size, bool bold)
 {
     int width = 0, height = 0;
     PangoLayout *layout = layout_of(canvas, text, size, bold);
@@ -96,18 +101,26 @@ void canvas_take(struct canvas *canvas, struct box box)
 
 static bool is_free(const struct canvas *canvas, struct box box, struct box within)
 {
-    if (box.x < within.x || box.y < within.y || box.x + box.width > within.x + within.width || box.y + box.height > within.y + within.height) return false;
+    if (box.x < within.x || box.y < within.y || box.x + box.width > within.x + within.width ||
+        box.y + box.height > within.y + within.height)
+        return false;
     for (size_t i = 0; i < canvas->labels; i++)
         if (box_meets(canvas->label[i], box)) return false;
     return true;
 }
 
-bool canvas_label(struct canvas *canvas, const char *text, double x, double y, struct box within, enum ink ink)
+bool canvas_label(struct canvas *canvas, const char *text, double x, double y, struct box within,
+                  enum ink ink)
 {
     const struct box size = canvas_text_size(canvas, text, 0.93, false);
     const double gap = 5 * canvas->scale;
-    const double at[][2] = {{x + gap, y - size.height - 1}, {x + gap, y + 1}, {x - gap - size.width, y - size.height - 1}, {x - gap - size.width, y + 1},
-                            {x - size.width / 2, y - size.height - gap}, {x + gap, y - 2 * size.height - 2}, {x - gap - size.width, y + size.height}};
+    const double at[][2] = {{x + gap, y - size.height - 1},
+                            {x + gap, y + 1},
+                            {x - gap - size.width, y - size.height - 1},
+                            {x - gap - size.width, y + 1},
+                            {x - size.width / 2, y - size.height - gap},
+                            {x + gap, y - 2 * size.height - 2},
+                            {x - gap - size.width, y + size.height}};
     for (size_t i = 0; i < sizeof at / sizeof at[0]; i++) {
         const struct box box = {at[i][0], at[i][1], size.width, size.height};
         if (!is_free(canvas, box, within)) continue;
@@ -140,7 +153,8 @@ struct axis axis_make(double low, double high, int most, bool from_zero, bool wi
         axis.high = ceil(axis.high / step - 1e-9) * step;
     }
     axis.decimals = (int)fmax(0, -floor(log10(step) + 1e-9));
-    for (double tick = ceil(axis.low / step - 1e-9) * step; tick <= axis.high + 1e-9 * step && axis.ticks < TICKS_MAX; tick += step)
+    for (double tick = ceil(axis.low / step - 1e-9) * step;
+         tick <= axis.high + 1e-9 * step && axis.ticks < TICKS_MAX; tick += step)
         axis.tick[axis.ticks++] = fabs(tick) < 1e-9 * step ? 0 : tick;
     return axis;
 }
@@ -184,14 +198,19 @@ void plot_frame(struct canvas *canvas, const struct plot *plot, const char *x_ti
         canvas_ink(canvas, INK_QUIET, 1);
         (void)snprintf(text, sizeof text, "%.*f", plot->x.decimals, plot->x.tick[i]);
         const double wide = canvas_text_size(canvas, text, 0.86, false).width;
-        (void)canvas_text(canvas, text, fmin(x - wide / 2, area.x + area.width - wide), area.y + area.height + 3 * canvas->scale, TEXT_LEFT, 0.86, false);
+        (void)canvas_text(canvas, text, fmin(x - wide / 2, area.x + area.width - wide),
+                          area.y + area.height + 3 * canvas->scale, TEXT_LEFT, 0.86, false);
     }
     canvas_ink(canvas, INK_QUIET, 1);
     line(canvas, area.x, area.y + area.height, area.x + area.width, area.y + area.height);
     canvas_ink(canvas, INK_TEXT, 1);
     if (x_title)
-        (void)canvas_text(canvas, x_title, area.x + area.width, area.y + area.height + 3 * canvas->scale + canvas_line_height(canvas), TEXT_RIGHT, 0.93, false);
-    if (y_title) (void)canvas_text(canvas, y_title, area.x, area.y - canvas_line_height(canvas) - 2 * canvas->scale, TEXT_LEFT, 0.93, true);
+        (void)canvas_text(canvas, x_title, area.x + area.width,
+                          area.y + area.height + 3 * canvas->scale + canvas_line_height(canvas), TEXT_RIGHT,
+                          0.93, false);
+    if (y_title)
+        (void)canvas_text(canvas, y_title, area.x, area.y - canvas_line_height(canvas) - 2 * canvas->scale,
+                          TEXT_LEFT, 0.93, true);
 }
 
 static void clip_to(const struct canvas *canvas, struct box area)
@@ -201,7 +220,8 @@ static void clip_to(const struct canvas *canvas, struct box area)
     cairo_clip(canvas->cairo);
 }
 
-void plot_curve(struct canvas *canvas, const struct plot *plot, const double *x, const double *y, size_t count, enum ink ink, double line_width, bool dashed)
+void plot_curve(struct canvas *canvas, const struct plot *plot, const double *x, const double *y,
+                size_t count, enum ink ink, double line_width, bool dashed)
 {
     const double dash[2] = {6 * canvas->scale, 4 * canvas->scale};
     bool pen_down = false;
@@ -225,12 +245,14 @@ void plot_curve(struct canvas *canvas, const struct plot *plot, const double *x,
     cairo_restore(canvas->cairo);
 }
 
-void plot_band(struct canvas *canvas, const struct plot *plot, const double *x, const double *low, const double *high, size_t count, enum ink ink, double alpha)
+void plot_band(struct canvas *canvas, const struct plot *plot, const double *x, const double *low,
+               const double *high, size_t count, enum ink ink, double alpha)
 {
     if (count < 2) return;
     clip_to(canvas, plot->area);
     cairo_move_to(canvas->cairo, plot_x(plot, x[0]), plot_y(plot, high[0]));
-    for (size_t i = 1; i < count; i++) cairo_line_to(canvas->cairo, plot_x(plot, x[i]), plot_y(plot, high[i]));
+    for (size_t i = 1; i < count; i++)
+        cairo_line_to(canvas->cairo, plot_x(plot, x[i]), plot_y(plot, high[i]));
     for (size_t i = count; i-- > 0;) cairo_line_to(canvas->cairo, plot_x(plot, x[i]), plot_y(plot, low[i]));
     cairo_close_path(canvas->cairo);
     canvas_ink(canvas, ink, alpha);

@@ -1,12 +1,14 @@
-/* Canvas: what all figures share: colours, text, axes with ticks, labels that keep clear of each other. Private to core/figure. */
+/* Canvas: what all figures share: colours, text, axes with ticks, labels that keep clear of each other.
+ * Private to core/figure. */
 #ifndef PULSEWRIGHT_CORE_FIGURE_CANVAS_H
 #define PULSEWRIGHT_CORE_FIGURE_CANVAS_H
 #include "core/figure/figure.h"
 #include <stdbool.h>
 #include <stddef.h>
 
-/* Roles of colour. Hues: blue, vermilion and bluish green of Okabe and Ito's set (2008, "Color Universal Design"), darkened or lightened
- * until text in them has a contrast of 4.5:1 on the background (W3C WCAG 2.1, 1.4.3). Never colour alone: lines differ in width or dash too. */
+/* Roles of colour. Hues: blue, vermilion and bluish green of Okabe and Ito's set (2008, "Color Universal
+ * Design"), darkened or lightened until text in them has a contrast of 4.5:1 on the background (W3C
+ * WCAG 2.1, 1.4.3). Never colour alone: lines differ in width or dash too. */
 enum ink { INK_PAPER, INK_TEXT, INK_QUIET, INK_GRID, INK_BLUE, INK_VERMILION, INK_GREEN, INK_BAND, INKS };
 struct colour {
     double red, green, blue;
@@ -35,13 +37,17 @@ double canvas_line_height(const struct canvas *canvas);
 /* Size of a text at a relative size (1: body). */
 struct box canvas_text_size(const struct canvas *canvas, const char *text, double size, bool bold);
 /* Draws text with its left, centre or right at x and its top at y; returns its box. Not noted as a label. */
-struct box canvas_text(struct canvas *canvas, const char *text, double x, double y, enum text_place place, double size, bool bold);
-/* Draws a label at the first of four places around (x, y) that is free and inside `within`; false: none is, nothing is drawn. */
-bool canvas_label(struct canvas *canvas, const char *text, double x, double y, struct box within, enum ink ink);
+struct box canvas_text(struct canvas *canvas, const char *text, double x, double y, enum text_place place,
+                       double size, bool bold);
+/* Draws a label at the first of four places around (x, y) that is free and inside `within`; false: none is,
+ * nothing is drawn. */
+bool canvas_label(struct canvas *canvas, const char *text, double x, double y, struct box within,
+                  enum ink ink);
 void canvas_take(struct canvas *canvas, struct box box); /* this place is used */
 bool box_meets(struct box a, struct box b);
 
-/* An axis from `low` to `high` with ticks at 1, 2 or 5 times a power of ten (Heckbert 1990, "Nice numbers for graph labels"). */
+/* An axis from `low` to `high` with ticks at 1, 2 or 5 times a power of ten (Heckbert 1990, "Nice numbers for
+ * graph labels"). */
 struct axis {
     double low, high;
     size_t ticks;
@@ -59,7 +65,9 @@ double plot_x(const struct plot *plot, double value);
 double plot_y(const struct plot *plot, double value);
 /* Frame, grid, tick texts; x_title NULL: no texts below. The title of y stands above the plot's left end. */
 void plot_frame(struct canvas *canvas, const struct plot *plot, const char *x_title, const char *y_title);
-void plot_curve(struct canvas *canvas, const struct plot *plot, const double *x, const double *y, size_t count, enum ink ink, double line_width, bool dashed);
-void plot_band(struct canvas *canvas, const struct plot *plot, const double *x, const double *low, const double *high, size_t count, enum ink ink, double alpha);
+void plot_curve(struct canvas *canvas, const struct plot *plot, const double *x, const double *y,
+                size_t count, enum ink ink, double line_width, bool dashed);
+void plot_band(struct canvas *canvas, const struct plot *plot, const double *x, const double *low,
+               const double *high, size_t count, enum ink ink, double alpha);
 
 #endif

@@ -1,5 +1,6 @@
-/* Figures, drawn on any cairo surface: the screen, the PNG and the printed sheet are the same picture. At most three hues, direct
- * labels, readable in black and white. Sizes in points of the surface; text by Pango. */
+/* Figures, drawn on any cairo surface: the screen, the PNG and the printed sheet are the same picture. At
+ * most three hues, direct labels, readable in black and white. Sizes in points of the surface; text by Pango.
+ */
 #ifndef PULSEWRIGHT_CORE_FIGURE_FIGURE_H
 #define PULSEWRIGHT_CORE_FIGURE_FIGURE_H
 #include "core/document/plan_document.h"
@@ -18,25 +19,31 @@ struct figure_score {
     const struct train_pulse *pulses;
     size_t pulse_count;
     const struct trace *trace;
-    double from_ms, to_ms;             /* shown time */
-    double target_n, tolerance_percent; /* NAN: none */
-    double hold_from_ms, hold_to_ms;    /* NAN: none */
+    double from_ms, to_ms;                  /* shown time */
+    double target_n, tolerance_percent;     /* NAN: none */
+    double hold_from_ms, hold_to_ms;        /* NAN: none */
     const double *measured_ms, *measured_n; /* recorded force laid over */
     size_t measured_count;
     const double *band_low_n, *band_high_n; /* at the trace's samples */
-    double cursor_ms; /* NAN: none */
+    double cursor_ms;                       /* NAN: none */
     const char *title;
 };
-void figure_score_draw(cairo_t *cairo, double width, double height, const struct figure_score *score, const struct figure_style *style);
+void figure_score_draw(cairo_t *cairo, double width, double height, const struct figure_score *score,
+                       const struct figure_style *style);
 
-/* A muscle at a glance: force-frequency, recruitment, staircase, recovery. Filled by curves_make in core/predict/curves.h. */
+/* A muscle at a glance: force-frequency, recruitment, staircase, recovery. Filled by curves_make in
+ * core/predict/curves.h. */
 struct curves;
-void figure_curves_draw(cairo_t *cairo, double width, double height, const struct curves *curves, const struct figure_style *style);
-void figure_session_draw(cairo_t *cairo, double width, double height, const struct plan *plan, unsigned chosen, const struct figure_style *style);
-void figure_ledger_draw(cairo_t *cairo, double width, double height, const struct ledger *ledger, const struct figure_style *style);
+void figure_curves_draw(cairo_t *cairo, double width, double height, const struct curves *curves,
+                        const struct figure_style *style);
+void figure_session_draw(cairo_t *cairo, double width, double height, const struct plan *plan,
+                         unsigned chosen, const struct figure_style *style);
+void figure_ledger_draw(cairo_t *cairo, double width, double height, const struct ledger *ledger,
+                        const struct figure_style *style);
 
 /* Draws into a file by its ending (.png, .svg, .pdf), via `draw`. */
-enum status figure_write(const char *path, double width, double height, void (*draw)(cairo_t *, double, double, const void *),
-                         const void *context, bool replace, struct message *why);
+enum status figure_write(const char *path, double width, double height,
+                         void (*draw)(cairo_t *, double, double, const void *), const void *context,
+                         bool replace, struct message *why);
 
 #endif

@@ -1,4 +1,5 @@
-/* The session strip and the dose ledger. The goal of this code: how long the force lasts, and how near each limit the plan comes. */
+/* The session strip and the dose ledger. The goal of this code: how long the force lasts, and how near each
+ * limit the plan comes. */
 #include "core/figure/canvas.h"
 
 #include <math.h>
@@ -7,7 +8,9 @@
 
 static unsigned contractions_of(const struct plan_channel *channel)
 {
-    return channel->blocks ? channel->block[channel->blocks - 1].first + channel->block[channel->blocks - 1].count - 1 : 0;
+    return channel->blocks
+               ? channel->block[channel->blocks - 1].first + channel->block[channel->blocks - 1].count - 1
+               : 0;
 }
 
 /* Mean of a contraction inside its block: first and last are known, between them it runs straight. */
@@ -17,15 +20,23 @@ static double mean_of(const struct plan_block *block, unsigned number)
     return block->recount.mean_n_first + share * (block->recount.mean_n_last - block->recount.mean_n_first);
 }
 
-static void draw_bars(struct canvas *canvas, const struct plot *plot, const struct plan *plan, const struct plan_channel *channel, unsigned chosen)
+static void draw_bars(struct canvas *canvas, const struct plot *plot, const struct plan *plan,
+                      const struct plan_channel *channel, unsigned chosen)
 {
     const double wide = plot->area.width / (plot->x.high - plot->x.low);
     for (size_t b = 0; b < channel->blocks; b++) {
         const struct plan_block *block = &channel->block[b];
         for (unsigned number = block->first; number < block->first + block->count; number++) {
-            const double mean_n = mean_of(block, number), x = plot_x(plot, number - 0.5), y = plot_y(plot, mean_n);
+            const double mean_n = mean_of(block, number), x = plot_x(plot, number - 0.5),
+                         y = plot_y(plot, mean_n);
             const bool missed = plan->first_miss && number >= plan->first_miss && !block->warm_up;
-            canvas_ink(canvas, number == chosen ? INK_TEXT : missed ? INK_VERMILION : INK_BLUE, block->warm_up ? 0.35 : missed ? 0.75 : 0.9);
+            canvas_ink(canvas,
+                       number == chosen ? INK_TEXT
+                       : missed         ? INK_VERMILION
+                                        : INK_BLUE,
+                       block->warm_up ? 0.35
+                       : missed       ? 0.75
+                                      : 0.9);
             const double gap = fmin(1.5, 0.15 * wide);
             if (missed) { /* also told without colour: hollow */
                 cairo_set_line_width(canvas->cairo, fmin(1.2 * canvas->scale, 0.4 * wide));
@@ -53,12 +64,14 @@ static void draw_remaining(struct canvas *canvas, const struct plot *plot, const
     cairo_stroke(canvas->cairo);
 }
 
-void figure_session_draw(cairo_t *cairo, double width, double height, const struct plan *plan, unsigned chosen, const struct figure_style *style)
+void figure_session_draw(cairo_t *cairo, double width, double height, const struct plan *plan,
+                         unsigned chosen, const struct figure_style *style)
 {
     struct canvas canvas = canvas_begin(cairo, width, height, style);
     const struct plan_channel *channel = plan->channels ? &plan->channel[0] : NULL;
     const unsigned contractions = channel ? contractions_of(channel) : 0;
-    const double line_height = canvas_line_height(&canvas), left = 58 * canvas.scale, right = 18 * canvas.scale;
+    const double line_height = canvas_line_height(&canvas), left = 58 * canvas.scale,
+                 right = 18 * canvas.scale;
     if (contractions == 0) {
         canvas_ink(&canvas, INK_TEXT, 1);
         (void)canvas_text(&canvas, plan->verdict, left, line_height, TEXT_LEFT, 1, true);
@@ -66,9 +79,14 @@ void figure_session_draw(cairo_t *cairo, double width, double height, const stru
     }
     double most = isnan(plan->target_n) ? 1 : plan->target_n * 1.1;
     for (size_t b = 0; b < channel->blocks; b++) most = fmax(most, channel->block[b].recount.mean_n_high);
-    const double top = 2.9 * line_height, bottom = 2.4 * line_height, room = fmax(height - top - bottom - 1.8 * line_height, 60);
-    struct plot means = {{left, top, width - left - right, 0.62 * room}, axis_make(0.5, contractions + 0.5, 12, false, false), axis_make(0, most * 1.04, 4, true, true)};
-    struct plot rest = {{left, top + 0.62 * room + 1.8 * line_height, width - left - right, 0.38 * room}, means.x, axis_make(0, 100, 3, true, false)};
+    const double top = 2.9 * line_height, bottom = 2.4 * line_height,
+                 room = fmax(height - top - bottom - 1.8 * line_height, 60);
+    struct plot means = {{left, top, width - left - right, 0.62 * room},
+                         axis_make(0.5, contractions + 0.5, 12, false, false),
+                         axis_make(0, most * 1.04, 4, true, true)};
+    struct plot rest = {{left, top + 0.62 * room + 1.8 * line_height, width - left - right, 0.38 * room},
+                        means.x,
+                        axis_make(0, 100, 3, true, false)};
     canvas_ink(&canvas, INK_TEXT, 1);
     (void)canvas_text(&canvas, plan->verdict, left, 4 * canvas.scale, TEXT_LEFT, 1.08, true);
     plot_frame(&canvas, &means, NULL, "Mean force of each contraction, N (hollow: missed)");
@@ -79,20 +97,24 @@ void figure_session_draw(cairo_t *cairo, double width, double height, const stru
         char text[48];
         plot_curve(&canvas, &means, edge, target, 2, INK_GREEN, 1.6, true);
         (void)snprintf(text, sizeof text, "target %.3g N", plan->target_n);
-        (void)canvas_label(&canvas, text, means.area.x + means.area.width - 4, plot_y(&means, plan->target_n), means.area, INK_GREEN);
+        (void)canvas_label(&canvas, text, means.area.x + means.area.width - 4, plot_y(&means, plan->target_n),
+                           means.area, INK_GREEN);
     }
     draw_remaining(&canvas, &rest, channel);
 }
 
-void figure_ledger_draw(cairo_t *cairo, double width, double height, const struct ledger *ledger, const struct figure_style *style)
+void figure_ledger_draw(cairo_t *cairo, double width, double height, const struct ledger *ledger,
+                        const struct figure_style *style)
 {
     struct canvas canvas = canvas_begin(cairo, width, height, style);
-    const double line_height = canvas_line_height(&canvas), left = 8 * canvas.scale, names = fmin(250 * canvas.scale, 0.45 * width);
+    const double line_height = canvas_line_height(&canvas), left = 8 * canvas.scale,
+                 names = fmin(250 * canvas.scale, 0.45 * width);
     const double bar = width - names - left - 150 * canvas.scale;
     double y = 6 * canvas.scale;
     char text[96];
     canvas_ink(&canvas, INK_TEXT, 1);
-    (void)canvas_text(&canvas, ledger->within ? "Dose: within every limit" : "Dose: a limit is broken", left, y, TEXT_LEFT, 1, true);
+    (void)canvas_text(&canvas, ledger->within ? "Dose: within every limit" : "Dose: a limit is broken", left,
+                      y, TEXT_LEFT, 1, true);
     y += 1.5 * line_height;
     for (size_t i = 0; i < ledger->figures && y + line_height <= height; i++) {
         const struct ledger_figure *figure = &ledger->figure[i];
@@ -108,10 +130,12 @@ void figure_ledger_draw(cairo_t *cairo, double width, double height, const struc
         cairo_rectangle(cairo, names + left, y + 0.2 * line_height, bar, 0.55 * line_height);
         cairo_fill(cairo);
         canvas_ink(&canvas, broken ? INK_VERMILION : INK_BLUE, 1);
-        cairo_rectangle(cairo, names + left, y + 0.2 * line_height, bar * fmin(1, figure->share), 0.55 * line_height);
+        cairo_rectangle(cairo, names + left, y + 0.2 * line_height, bar * fmin(1, figure->share),
+                        0.55 * line_height);
         cairo_fill(cairo);
         canvas_ink(&canvas, INK_TEXT, 1);
-        (void)snprintf(text, sizeof text, "%.3g of %.3g %s", figure->value, figure->limit, dose_figure_unit(figure->figure));
+        (void)snprintf(text, sizeof text, "%.3g of %.3g %s", figure->value, figure->limit,
+                       dose_figure_unit(figure->figure));
         (void)canvas_text(&canvas, text, width - 8 * canvas.scale, y, TEXT_RIGHT, 0.86, broken);
         y += line_height;
     }

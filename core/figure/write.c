@@ -1,4 +1,5 @@
-/* Figures into files. The goal of this code: the ending of the name says the form; nothing is overwritten unasked. */
+/* Figures into files. The goal of this code: the ending of the name says the form; nothing is overwritten
+ * unasked. */
 #include "core/document/document.h"
 #include "core/figure/figure.h"
 
@@ -22,7 +23,8 @@ static cairo_status_t take(void *context, const unsigned char *data, unsigned le
     return CAIRO_STATUS_SUCCESS;
 }
 
-enum status figure_write(const char *path, double width, double height, void (*draw)(cairo_t *, double, double, const void *), const void *context,
+enum status figure_write(const char *path, double width, double height,
+                         void (*draw)(cairo_t *, double, double, const void *), const void *context,
                          bool replace, struct message *why)
 {
     const char *ending = strrchr(path, '.');
@@ -46,8 +48,10 @@ enum status figure_write(const char *path, double width, double height, void (*d
     cairo_surface_finish(surface);
     if (drawn == CAIRO_STATUS_SUCCESS) drawn = cairo_surface_status(surface);
     cairo_surface_destroy(surface);
-    const enum status status = drawn == CAIRO_STATUS_SUCCESS ? document_write_file(path, out.data, out.size, replace, why)
-                                                             : status_fail(why, STATUS_INTERNAL, "%s: %s", path, cairo_status_to_string(drawn));
+    const enum status status =
+        drawn == CAIRO_STATUS_SUCCESS
+            ? document_write_file(path, out.data, out.size, replace, why)
+            : status_fail(why, STATUS_INTERNAL, "%s: %s", path, cairo_status_to_string(drawn));
     text_out_free(&out);
     return status;
 }

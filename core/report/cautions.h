@@ -1,4 +1,5 @@
-/* Cautions: the usual precautions that the sheet lists, the signer acknowledges and streaming shows. Not exhaustive. One table. */
+/* Cautions: the usual precautions that the sheet lists, the signer acknowledges and streaming shows. Not
+ * exhaustive. One table. */
 #ifndef PULSEWRIGHT_CORE_REPORT_CAUTIONS_H
 #define PULSEWRIGHT_CORE_REPORT_CAUTIONS_H
 #include <stddef.h>

@@ -1,9 +1,10 @@
 /* JSON writer. The goal of this code: what is printed is always valid JSON, whatever the values. */
 #include "core/report/json.h"
 
+#include "core/document/document.h"
+
 #include <assert.h>
 #include <math.h>
-#include <stdlib.h>
 
 static void put_string(FILE *out, const char *text)
 {
@@ -59,10 +60,22 @@ void json_end(struct json *json)
     fputc('\n', json->out);
 }
 
-void json_object(struct json *json, const char *key) { open_level(json, key, '{'); }
-void json_object_end(struct json *json) { close_level(json, '}'); }
-void json_array(struct json *json, const char *key) { open_level(json, key, '['); }
-void json_array_end(struct json *json) { close_level(json, ']'); }
+void json_object(struct json *json, const char *key)
+{
+    open_level(json, key, '{');
+}
+void json_object_end(struct json *json)
+{
+    close_level(json, '}');
+}
+void json_array(struct json *json, const char *key)
+{
+    open_level(json, key, '[');
+}
+void json_array_end(struct json *json)
+{
+    close_level(json, ']');
+}
 
 void json_number(struct json *json, const char *key, double value)
 {
@@ -72,10 +85,7 @@ void json_number(struct json *json, const char *key, double value)
         return;
     }
     char text[32];
-    for (int digits = 1; digits <= 17; digits++) {
-        (void)snprintf(text, sizeof text, "%.*g", digits, value);
-        if (!(strtod(text, NULL) < value) && !(strtod(text, NULL) > value)) break;
-    }
+    (void)number_text(value, text);
     fputs(text, json->out);
 }
 

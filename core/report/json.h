@@ -1,5 +1,5 @@
-/* JSON for machines (RFC 8259): a writer that keeps track of commas and nesting. Numbers are the shortest that read back the same;
- * NAN and infinity are null. */
+/* JSON for machines (RFC 8259): a writer that keeps track of commas and nesting. Numbers are the shortest
+ * that read back the same; NAN and infinity are null. */
 #ifndef PULSEWRIGHT_CORE_REPORT_JSON_H
 #define PULSEWRIGHT_CORE_REPORT_JSON_H
 #include <stdbool.h>

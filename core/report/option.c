@@ -1,4 +1,5 @@
-/* Options from one table a command. The goal of this code: a mistyped option never runs, and help can not differ from what is taken. */
+/* Options from one table a command. The goal of this code: a mistyped option never runs, and help can not
+ * differ from what is taken. */
 #include "core/report/option.h"
 
 #include <errno.h>
@@ -16,8 +17,10 @@ const char *const option_quantities =
     "  rest_ms      from the last pulse to the next first pulse\n"
     "  force        at time t of a trace it is F(t - delay) + tone, as a recording shows it\n"
     "\n"
-    "This is research software, no medical device. It ends in current through a person: local codes and licensed\n"
-    "practice come first, strength is found from zero, and the emergency stop is a switch in series with the output.\n";
+    "This is research software, no medical device. It ends in current through a person: local codes and "
+    "licensed\n"
+    "practice come first, strength is found from zero, and the emergency stop is a switch in series with the "
+    "output.\n";
 
 static const struct option *find_option(const struct command *command, const char *name)
 {
@@ -33,11 +36,13 @@ static void print_command_help(const struct program *program, const struct comma
     printf("\nOptions:\n");
     for (const struct option *option = command->options; option && option->name; option++) {
         char left[64];
-        (void)snprintf(left, sizeof left, "%s%s%s", option->name, option->value ? " " : "", option->value ? option->value : "");
+        (void)snprintf(left, sizeof left, "%s%s%s", option->name, option->value ? " " : "",
+                       option->value ? option->value : "");
         printf("  %-24s %s\n", left, option->help);
     }
     printf("  %-24s %s\n  %-24s %s\n", "--help", "this text", "--version", "name and version");
-    printf("\nExit: 0 done, 2 wrong usage, 3 the answer is no, 4 bad document, 5 device or link, 6 internal error.\n");
+    printf("\nExit: 0 done, 2 wrong usage, 3 the answer is no, 4 bad document, 5 device or link, 6 internal "
+           "error.\n");
     if (program->epilogue) printf("\n%s", program->epilogue);
 }
 
@@ -46,15 +51,17 @@ static void print_program_help(const struct program *program)
     printf("usage: %s COMMAND ...\n\n%s\n\nCommands (each has --help):\n", program->name, program->summary);
     for (const struct command *const *command = program->commands; *command; command++)
         if (!(*command)->hidden) printf("  %-10s %s\n", (*command)->name, (*command)->summary);
-    printf("\nExit: 0 done, 2 wrong usage, 3 the answer is no, 4 bad document, 5 device or link, 6 internal error.\n");
+    printf("\nExit: 0 done, 2 wrong usage, 3 the answer is no, 4 bad document, 5 device or link, 6 internal "
+           "error.\n");
     if (program->epilogue) printf("\n%s", program->epilogue);
 }
 
-static int usage_error(const struct program *program, const struct command *command, const char *what, const char *which)
+static int usage_error(const struct program *program, const struct command *command, const char *what,
+                       const char *which)
 {
     if (command)
-        fprintf(stderr, "%s %s: %s%s\nusage: %s %s %s\n", program->name, command->name, what, which, program->name,
-                command->name, command->usage);
+        fprintf(stderr, "%s %s: %s%s\nusage: %s %s %s\n", program->name, command->name, what, which,
+                program->name, command->name, command->usage);
     else
         fprintf(stderr, "%s: %s%s (see %s --help)\n", program->name, what, which, program->name);
     return STATUS_USAGE;
@@ -73,7 +80,8 @@ static int take_option(struct arguments *arguments, int argc, char **argv, int *
     name[length] = '\0';
     const struct option *option = find_option(command, name);
     if (!option) return usage_error(program, command, "unknown option ", name);
-    if (arguments->values == ARGUMENTS_MAX) return usage_error(program, command, "too many options at ", name);
+    if (arguments->values == ARGUMENTS_MAX)
+        return usage_error(program, command, "too many options at ", name);
     const char *value = "";
     if (option->value && equals) {
         value = equals + 1;
@@ -106,16 +114,20 @@ static int run_command(const struct program *program, const struct command *comm
             const int failed = take_option(&arguments, argc, argv, &at);
             if (failed) return failed;
         } else {
-            if (arguments.positionals == ARGUMENTS_MAX) return usage_error(program, command, "too many arguments at ", word);
+            if (arguments.positionals == ARGUMENTS_MAX)
+                return usage_error(program, command, "too many arguments at ", word);
             arguments.positional[arguments.positionals++] = word;
         }
     }
-    if (arguments.positionals < command->positional_least) return usage_error(program, command, "an argument is missing", "");
+    if (arguments.positionals < command->positional_least)
+        return usage_error(program, command, "an argument is missing", "");
     if (arguments.positionals > command->positional_most)
-        return usage_error(program, command, "one argument too many: ", arguments.positional[command->positional_most]);
+        return usage_error(program, command,
+                           "one argument too many: ", arguments.positional[command->positional_most]);
     int code = (int)command->run(&arguments);
     if (fflush(stdout) != 0 || ferror(stdout)) {
-        fprintf(stderr, "%s %s: standard output can not be written: %s\n", program->name, command->name, strerror(errno));
+        fprintf(stderr, "%s %s: standard output can not be written: %s\n", program->name, command->name,
+                strerror(errno));
         if (code == STATUS_OK) code = STATUS_INTERNAL;
     }
     return code;
@@ -153,7 +165,8 @@ bool argument_given(const struct arguments *arguments, const char *name)
     return argument(arguments, name) != NULL;
 }
 
-enum status argument_number(const struct arguments *arguments, const char *name, double least, double most, double *value)
+enum status argument_number(const struct arguments *arguments, const char *name, double least, double most,
+                            double *value)
 {
     const char *text = argument(arguments, name);
     if (!text) return STATUS_OK;
@@ -162,7 +175,8 @@ enum status argument_number(const struct arguments *arguments, const char *name,
     if (end == text || *end != '\0' || !isfinite(number))
         return command_fail(arguments, STATUS_USAGE, "%s holds \"%s\", which is no number", name, text);
     if (number < least || number > most)
-        return command_fail(arguments, STATUS_USAGE, "%s holds %s, it may hold %g to %g", name, text, least, most);
+        return command_fail(arguments, STATUS_USAGE, "%s holds %s, it may hold %g to %g", name, text, least,
+                            most);
     *value = number;
     return STATUS_OK;
 }
@@ -173,10 +187,13 @@ enum status argument_pair(const struct arguments *arguments, const char *name, d
     if (!text) return STATUS_OK;
     char *end = NULL, *end_b = NULL;
     const double first = strtod(text, &end);
-    if (end == text || *end != ',') return command_fail(arguments, STATUS_USAGE, "%s holds \"%s\", it may hold two numbers A,B", name, text);
+    if (end == text || *end != ',')
+        return command_fail(arguments, STATUS_USAGE, "%s holds \"%s\", it may hold two numbers A,B", name,
+                            text);
     const double second = strtod(end + 1, &end_b);
     if (end_b == end + 1 || *end_b != '\0' || !isfinite(first) || !isfinite(second))
-        return command_fail(arguments, STATUS_USAGE, "%s holds \"%s\", it may hold two numbers A,B", name, text);
+        return command_fail(arguments, STATUS_USAGE, "%s holds \"%s\", it may hold two numbers A,B", name,
+                            text);
     *a = first;
     *b = second;
     return STATUS_OK;
