@@ -1,4 +1,5 @@
-/* The program `pulsewright-bridge`: signs plans, streams them to a stimulator or its twin, keeps the record. */
+/* The program `pulsewright-bridge`: signs plans, streams them to a stimulator or its twin, keeps the record.
+ */
 #include "bridge/command/commands.h"
 
 #ifdef PULSEWRIGHT_TEST_BUILD
@@ -13,7 +14,8 @@ int main(int argc, char **argv)
     static const struct command *const commands[] = {BRIDGE_COMMANDS(COMMAND_ADDRESS) NULL};
 #undef COMMAND_ADDRESS
     struct program program = {.name = "pulsewright-bridge",
-                              .summary = "Signs plans, streams them to a stimulator or its twin, keeps the record.",
+                              .summary =
+                                  "Signs plans, streams them to a stimulator or its twin, keeps the record.",
                               .version = "pulsewright-bridge " PULSEWRIGHT_VERSION BUILD_NOTE,
                               .commands = commands,
                               .epilogue = option_quantities};

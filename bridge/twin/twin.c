@@ -3,6 +3,7 @@
  * in order, at their own time; octets move at the baud. */
 #include "bridge/twin/twin.h"
 
+#include "bridge/gate/gate.h"
 #include "bridge/stimulator/device.h"
 #include "bridge/twin/faults.h"
 #include "bridge/twin/muscle.h"
@@ -146,29 +147,6 @@ static struct stimulator built_in(void)
     return stimulator;
 }
 
-struct image_identity twin_identity(const struct stimulator *stimulator)
-{
-    const struct train_grid grid = stimulator_grid(stimulator);
-    struct image_identity identity = {
-        .channels = (uint8_t)stimulator->channels,
-        .capacitor_balanced = stimulator->capacitor_balanced,
-        .independent = stimulator->independent,
-        .current_from_ua = grid.current_from_ua,
-        .current_to_ua = (uint32_t)lround(stimulator->current_ma.to * 1e3),
-        .current_step_ua = grid.current_step_ua,
-        .duration_from_us = grid.duration_from_us,
-        .duration_to_us = (uint16_t)lround(stimulator->duration_us.to),
-        .duration_step_us = grid.duration_step_us,
-        .interphase_us = (uint16_t)lround(stimulator->interphase_us),
-        .recovery_us = stimulator->capacitor_balanced ? (uint32_t)lround(stimulator->recovery_us) : 0};
-    (void)snprintf(identity.unit, sizeof identity.unit, "%.31s",
-                   stimulator->unit[0] ? stimulator->unit : stimulator->name);
-    for (size_t g = 0; g < stimulator->returns; g++)
-        for (size_t i = 0; i < stimulator->return_group[g].channels; i++)
-            identity.return_group[stimulator->return_group[g].channel[i] - 1] = (uint8_t)(g + 1);
-    return identity;
-}
-
 /* A muscle for each name that the hookup (or the one name) asks for. */
 static enum status hook_muscles(struct twin *twin, const struct twin_options *options, struct message *why)
 {
@@ -222,7 +200,7 @@ enum status twin_new(const struct twin_options *options, struct link *wire, uint
     twin->fresh = options->seed;
     twin->begin_us = twin->in_us = twin->out_us = now_us;
     twin->build =
-        (struct device_build){.identity = twin_identity(stimulator),
+        (struct device_build){.identity = image_identity_of(stimulator),
                               .version = 1,
                               .queue_segments = (uint16_t)(stimulator->queue_segments < DEVICE_QUEUE_MAX
                                                                ? stimulator->queue_segments

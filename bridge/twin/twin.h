@@ -23,8 +23,6 @@ struct twin;
 /* `wire` is the device's end of a link; it outlives the twin. now_us: the clock's value at this reset. */
 enum status twin_new(const struct twin_options *options, struct link *wire, uint64_t now_us,
                      struct twin **twin, struct message *why);
-/* What a device by this document says it is. */
-struct image_identity twin_identity(const struct stimulator *stimulator);
 bool twin_is_silent(const struct twin *twin); /* not running */
 void twin_free(struct twin *twin);
 /* Runs all that is due up to now_us (its own clock, which only grows). */

@@ -3,41 +3,10 @@
  * states are never weaker than the device's and the program's. */
 #include "core/command/check_plan.h"
 #include "core/command/plan_output.h"
-#include "core/plan/channel.h"
 #include "core/plan/plan.h"
 
 #include <stdio.h>
 #include <stdlib.h>
-
-/* The stated limits, tightened to what stimulator and program allow; whose it is follows. */
-static void tighten(const struct plan *plan, struct ledger_channel *channel)
-{
-    const struct dose_device device = stimulator_dose_device(&plan->stimulator);
-    struct dose_limits outer;
-    const char *source[DOSE_FIGURES] = {0};
-    limits_effective(&device, NULL, &outer, source);
-    channel->limits = dose_stricter(&channel->limits, &outer);
-    for (int f = 0; f < DOSE_FIGURES; f++)
-        if (!channel->source[f]) channel->source[f] = source[f];
-}
-
-static enum status make_ledger(const struct plan *plan, struct ledger *ledger, struct message *why)
-{
-    struct ledger_channel channels[STIMULATOR_CHANNELS_MAX];
-    struct segment *segments = NULL;
-    size_t count = 0;
-    if (plan->channels == 0 || plan->channels > STIMULATOR_CHANNELS_MAX)
-        return status_fail(why, STATUS_DOCUMENT, "channels: holds %zu, it may hold 1 to %d", plan->channels,
-                           (int)STIMULATOR_CHANNELS_MAX);
-    plan_ledger_channels(plan, channels);
-    for (size_t c = 0; c < plan->channels; c++) tighten(plan, &channels[c]);
-    enum status status = plan_segments(plan, &segments, &count, why);
-    if (status != STATUS_OK) return status;
-    const struct train_grid grid = stimulator_grid(&plan->stimulator);
-    status = ledger_make(segments, count, &grid, channels, plan->channels, ledger, why);
-    free(segments);
-    return status;
-}
 
 static void print_json(const struct plan *plan, const struct ledger *ledger)
 {
@@ -81,7 +50,7 @@ enum status check_plan(const struct arguments *arguments, const struct document_
     struct ledger ledger = {0};
     enum status status = plan_parse(bytes, &plan, &why);
     if (status != STATUS_OK) return command_fail(arguments, status, "%s", why.text);
-    status = make_ledger(&plan, &ledger, &why);
+    status = plan_ledger(&plan, &ledger, &why);
     if (status == STATUS_OK) {
         if (argument_given(arguments, "--json"))
             print_json(&plan, &ledger);

@@ -97,8 +97,13 @@ enum status document_read_bytes(const char *path, struct document_bytes *bytes, 
         return status;
     }
     bytes->data[bytes->size] = '\0';
-    blake2b(bytes->digest, sizeof bytes->digest, bytes->data, bytes->size);
+    document_bytes_digest(bytes);
     return STATUS_OK;
+}
+
+void document_bytes_digest(struct document_bytes *bytes)
+{
+    blake2b(bytes->digest, sizeof bytes->digest, bytes->data, bytes->size);
 }
 
 void document_bytes_free(struct document_bytes *bytes)

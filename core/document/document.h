@@ -30,6 +30,7 @@ struct document_bytes {
     uint8_t digest[DIGEST_SIZE];
 };
 enum status document_read_bytes(const char *path, struct document_bytes *bytes, struct message *why);
+void document_bytes_digest(struct document_bytes *bytes); /* fills the digest, where bytes were made otherwise */
 void document_bytes_free(struct document_bytes *bytes);
 /* Which kind a file says it is by its `format:` line. */
 enum status document_kind_of(const struct document_bytes *bytes, enum document_kind *kind, struct message *why);

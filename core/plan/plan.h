@@ -35,6 +35,10 @@ enum status plan_recount(struct plan *plan, const struct profile *profile, const
 /* All segments of a plan, sorted by start; *segments is malloc'ed. */
 enum status plan_segments(const struct plan *plan, struct segment **segments, size_t *count,
                           struct message *why);
+/* The limits of a plan's channel, tightened to what stimulator and program allow. */
+struct dose_limits plan_channel_limits(const struct plan *plan, size_t channel);
+/* The dose of a plan, made anew from its pulses under those limits. Free with ledger_free. */
+enum status plan_ledger(const struct plan *plan, struct ledger *ledger, struct message *why);
 /* A train compiled for a stimulator as a plan with one channel (no demand, no target), so that it can be
  * checked, signed and streamed. */
 enum status plan_of_train(const struct train *train, const struct profile *profile, const char *muscle,

@@ -2,6 +2,7 @@
  * clock starts 5 s before 2^32 us. */
 #ifndef PULSEWRIGHT_TESTS_BRIDGE_SIMULATION_H
 #define PULSEWRIGHT_TESTS_BRIDGE_SIMULATION_H
+#include "bridge/gate/gate.h"
 #include "bridge/host/host.h"
 #include "bridge/link/link.h"
 #include "bridge/twin/twin.h"
@@ -68,7 +69,7 @@ static inline void simulation_make_image(struct simulation *s, unsigned trains, 
                                             .channels = 1,
                                             .channel = {1},
                                             .person_digest = 7};
-    s->image.identity = twin_identity(&s->stimulator);
+    s->image.identity = image_identity_of(&s->stimulator);
     s->image.segments = s->segment;
     memset(s->segment, 0, sizeof s->segment);
     uint64_t start_us = 0;
