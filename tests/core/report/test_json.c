@@ -17,7 +17,7 @@ static void nesting_commas_and_escapes(void **state)
     json_text(&json, "a", "x\"\\\n");
     json_array(&json, "b");
     json_number(&json, NULL, 0.1);
-    json_number(&json, NULL, NAN);
+    json_number(&json, NULL, (double)NAN);
     json_array_end(&json);
     json_bool(&json, "c", true);
     json_end(&json);
