@@ -35,6 +35,8 @@ enum status plan_recount(struct plan *plan, const struct profile *profile, const
 /* All segments of a plan, sorted by start; *segments is malloc'ed. */
 enum status plan_segments(const struct plan *plan, struct segment **segments, size_t *count,
                           struct message *why);
+/* Time of a contraction's first pulse from T0, on the channel of this index. */
+enum status plan_contraction_start_us(const struct plan *plan, size_t channel, unsigned number, uint64_t *start_us, struct message *why);
 /* The limits of a plan's channel, tightened to what stimulator and program allow. */
 struct dose_limits plan_channel_limits(const struct plan *plan, size_t channel);
 /* The dose of a plan, made anew from its pulses under those limits. Free with ledger_free. */

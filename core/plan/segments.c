@@ -89,3 +89,28 @@ enum status plan_segments(const struct plan *plan, struct segment **segments, si
     *count = filled;
     return STATUS_OK;
 }
+
+enum status plan_contraction_start_us(const struct plan *plan, size_t channel, unsigned number, uint64_t *start_us, struct message *why)
+{
+    const struct train_grid grid = stimulator_grid(&plan->stimulator);
+    const struct plan_channel *of = &plan->channel[channel];
+    uint64_t at_us = plan_us_up(of->start_ms);
+    for (size_t b = 0; b < of->blocks; b++) {
+        const struct plan_block *block = &of->block[b];
+        const size_t capacity = block_capacity(&block->settings);
+        struct segment *scratch = calloc(capacity, sizeof *scratch);
+        size_t some = 0;
+        uint64_t last_us = 0;
+        if (!scratch) return status_fail(why, STATUS_INTERNAL, "out of memory");
+        const enum status status = contraction_segments(&block->settings, &grid, at_us, (uint8_t)of->channel, scratch, capacity, &some, &last_us, why);
+        free(scratch);
+        if (status != STATUS_OK) return status;
+        const uint64_t stride_us = last_us - at_us + plan_us_up(block->settings.rest_ms);
+        if (number >= block->first && number < block->first + block->count) {
+            *start_us = at_us + stride_us * (number - block->first);
+            return STATUS_OK;
+        }
+        at_us += stride_us * block->count;
+    }
+    return status_fail(why, STATUS_USAGE, "the plan has no contraction %u", number);
+}
