@@ -31,7 +31,8 @@ static const struct option *find_option(const struct command *command, const cha
 
 static void print_command_help(const struct program *program, const struct command *command)
 {
-    printf("usage: %s %s %s\n\n%s\n", program->name, command->name, command->usage, command->summary);
+    printf("usage: %s%s%s %s\n\n%s\n", program->name, command->name[0] ? " " : "", command->name,
+           command->usage, command->summary);
     if (command->help) printf("\n%s\n", command->help);
     printf("\nOptions:\n");
     for (const struct option *option = command->options; option && option->name; option++) {
@@ -131,6 +132,11 @@ static int run_command(const struct program *program, const struct command *comm
         if (code == STATUS_OK) code = STATUS_INTERNAL;
     }
     return code;
+}
+
+int command_main(const struct program *program, const struct command *command, int argc, char **argv)
+{
+    return run_command(program, command, argc - 1, argv + 1);
 }
 
 int program_main(const struct program *program, int argc, char **argv)

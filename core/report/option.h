@@ -46,6 +46,8 @@ struct arguments {
 
 /* Parses, answers --help and --version, runs; returns the exit code. */
 int program_main(const struct program *program, int argc, char **argv);
+/* The same for a program without commands: `command` has an empty name. */
+int command_main(const struct program *program, const struct command *command, int argc, char **argv);
 /* Value of an option, NULL where it was not given (the last where it was given twice). */
 const char *argument(const struct arguments *arguments, const char *name);
 bool argument_given(const struct arguments *arguments, const char *name);
