@@ -137,12 +137,11 @@ enum status window_main(const struct window_run *run, struct message *why)
     if (status == STATUS_OK && !screen.renderer)
         status = status_fail(why, STATUS_DEVICE, "no window: %s", SDL_GetError());
     if (screen.window) SDL_SetWindowMinimumSize(screen.window, 800, 560);
-    bool again = true;
-    for (long frame = 0; status == STATUS_OK && !screen.closed && (run->frames < 0 || frame < run->frames);
-         frame++) {
+    int settling = 2; /* frames still to draw: one more follows each event, then nothing is drawn until the next */
+    for (long frame = 0; status == STATUS_OK && !screen.closed && (run->frames < 0 || frame < run->frames); frame++) {
         if (!fit(&screen)) break;
-        draw(&screen, ui, run);
-        again = wait_for_events(&screen, ui, again);
+        if (settling > 0) draw(&screen, ui, run);
+        settling = wait_for_events(&screen, ui, settling > 1) ? 2 : settling > 0 ? settling - 1 : 0;
     }
     if (status == STATUS_OK && run->picture && screen.surface &&
         cairo_surface_write_to_png(screen.surface, run->picture) != CAIRO_STATUS_SUCCESS)
