@@ -2,6 +2,7 @@
 #include "core/document/hookup.h"
 
 #include "core/document/fields.h"
+#include "core/document/schemas.h"
 #include <stdio.h>
 
 typedef struct hookup_channel HC;
@@ -36,7 +37,7 @@ static enum status check_hookup(struct reading *reading, const char *path, void 
         }
     return STATUS_OK;
 }
-static const struct schema hookup_schema = {
+const struct schema hookup_schema = {
     .name = "a hookup", .size = sizeof(struct hookup), .fields = hookup_fields, .check = check_hookup};
 
 enum status hookup_parse(const struct document_bytes *bytes, struct hookup *hookup, struct message *why)

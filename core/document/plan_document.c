@@ -553,7 +553,7 @@ static enum status check_plan(struct reading *reading, const char *path, void *o
     }
     return STATUS_OK;
 }
-static const struct schema plan_schema = {
+const struct schema plan_schema = {
     .name = "a plan", .size = sizeof(PN), .fields = plan_fields, .check = check_plan};
 
 enum status plan_parse(const struct document_bytes *bytes, struct plan *plan, struct message *why)

@@ -460,7 +460,7 @@ static enum status check_profile(struct reading *reading, const char *path, void
         }
     return STATUS_OK;
 }
-static const struct schema profile_schema = {
+const struct schema profile_schema = {
     .name = "a profile", .size = sizeof(struct profile), .fields = profile_fields, .check = check_profile};
 
 enum status profile_parse(const struct document_bytes *bytes, struct profile *profile, struct message *why)

@@ -2,6 +2,7 @@
 #include "core/document/recordings.h"
 
 #include "core/document/fields.h"
+#include "core/document/schemas.h"
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -173,7 +174,7 @@ static enum status check_recordings(struct reading *reading, const char *path, v
         }
     return STATUS_OK;
 }
-static const struct schema recordings_schema = {
+const struct schema recordings_schema = {
     .name = "recordings", .size = sizeof(RS), .fields = recordings_fields, .check = check_recordings};
 
 enum status recordings_parse(const struct document_bytes *bytes, struct recordings *recordings,

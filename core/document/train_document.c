@@ -215,7 +215,7 @@ static enum status check_train(struct reading *reading, const char *path, void *
     }
     return STATUS_OK;
 }
-static const struct schema train_schema = {
+const struct schema train_schema = {
     .name = "a train", .size = sizeof(struct train), .fields = train_fields, .check = check_train};
 
 enum status train_parse(const struct document_bytes *bytes, struct train *train, struct message *why)
