@@ -18,7 +18,9 @@ for program in pulsewright pulsewright-bridge; do
     # names are what the X list of commands.h holds, so that a command that --help leaves out is missed too
     wing=core
     [ "$program" = pulsewright ] || wing=bridge
-    for command in $(sed -n 's/^ *X(\([a-z_]*\)).*/\1/p' "$source/$wing/command/commands.h" | tr _ -); do
+    commands=$(grep -o 'X([a-z_]*)' "$source/$wing/command/commands.h" | sed 's/X(\(.*\))/\1/' | grep -vx name | tr _ -)
+    [ -n "$commands" ] || fail "$wing/command/commands.h lists no command: this check would check nothing"
+    for command in $commands; do
         timeout 20 "$build/bin/$program" "$command" --help >"$log" 2>&1 </dev/null || fail "$program $command --help: exit $?"
         grep -q "^usage: $program $command" "$log" || fail "$program $command --help shows no usage of its own"
         grep -q '^Exit: 0 done' "$log" || fail "$program $command --help does not say its exit codes"
