@@ -47,7 +47,7 @@ done
 
 tree=$build/moved-static
 for file in share/pulsewright/profiles/people/p-017.yaml share/doc/pulsewright/LICENSE share/doc/pulsewright/README.md \
-    share/man/man1/pulsewright.1 include/pulsewright/core/predict/predict.h; do
+    share/man/man1/pulsewright.1 share/man/man1/pulsewright-bridge.1 share/man/man1/pulsewright-panel.1 include/pulsewright/core/predict/predict.h; do
     [ -s "$tree/$file" ] || die "$file is not installed"
 done
 [ ! -e "$tree/include/pulsewright/core/command" ] || die "headers of the program are installed as the library's"
