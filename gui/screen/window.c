@@ -105,8 +105,15 @@ static void draw(struct screen *screen, struct ui *ui, const struct window_run *
     SDL_RenderPresent(screen->renderer);
 }
 
-/* Waits for something to happen, takes all that did. A frame more follows each event, so that what it changed
- * is seen by every widget. */
+/* A key may move the focus or end an edit, which happens at the end of a frame: what was typed after it belongs to the
+ * next frame, else digits typed behind a Tab are lost when a frame is slow. */
+static bool ends_frame(const SDL_Event *event)
+{
+    return event->type == SDL_KEYDOWN && key_of(&event->key.keysym) != UI_KEY_NONE;
+}
+
+/* Waits for something to happen, takes all that did, up to a key. A frame more follows each event, so that what it
+ * changed is seen by every widget. */
 static bool wait_for_events(struct screen *screen, struct ui *ui, bool again)
 {
     SDL_Event event;
@@ -114,7 +121,7 @@ static bool wait_for_events(struct screen *screen, struct ui *ui, bool again)
     const bool any = some;
     while (some) {
         take(screen, ui, &event);
-        some = ui->events < UI_EVENTS_MAX / 2 && SDL_PollEvent(&event) != 0;
+        some = !ends_frame(&event) && ui->events < UI_EVENTS_MAX / 2 && SDL_PollEvent(&event) != 0;
     }
     return any;
 }

@@ -37,14 +37,14 @@ Xvfb ":$number" -screen 0 1280x900x24 >/dev/null 2>&1 &
 server=$!
 trap 'kill $server 2>/dev/null || true; rm -rf "$work"' EXIT
 export DISPLAY=":$number"
-for i in 1 2 3 4 5 6 7 8 9 10; do
+for i in $(seq 40); do
     sleep 0.3
     xdotool getmouselocation >/dev/null 2>&1 && break
 done
 "$panel" "$person" --picture "$work/window.png" --json >"$work/window.json" &
 shown=$!
 window=
-for i in 1 2 3 4 5 6 7 8 9 10 11 12 13 14 15 16 17 18 19 20; do
+for i in $(seq 100); do # a loaded machine takes its time
     sleep 0.3
     window=$(xdotool search --name '^pulsewright$' 2>/dev/null | head -n 1) && [ -n "$window" ] && break
 done
