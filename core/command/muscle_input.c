@@ -1,6 +1,7 @@
 /* A muscle and its pulses from the command line. The goal of this code:
  * predict, curves and pulses read the same documents the same way. */
 #include "core/command/muscle_input.h"
+#include "core/muscle/recruitment.h"
 
 #include <math.h>
 #include <stdlib.h>
@@ -58,7 +59,8 @@ enum status muscle_input_train(const struct arguments *arguments, const char *pa
     bool compiled;
     enum status status = load_grid(arguments, &grid, &compiled, why);
     if (status == STATUS_OK) status = load_hookup(arguments, input, why);
-    if (status == STATUS_OK) status = train_load(path, &train, why);
+    if (status == STATUS_OK)
+        status = train_load_for(path, &input->muscle->parameters.recruitment, &train, why);
     if (status != STATUS_OK) return status;
     status =
         contraction_list_pulses(train.contraction, train.contractions, &input->muscle->parameters.recruitment,
@@ -74,6 +76,17 @@ static enum status load_pulses(const char *path, struct muscle_input *input, str
     struct pulses_table table;
     const enum status status = pulses_load(path, &table, why);
     if (status != STATUS_OK) return status;
+    const struct recruitment *law = &input->muscle->parameters.recruitment;
+    for (size_t i = 0; i < table.pulses; i++) {
+        const bool other =
+            table.muscle && table.muscle[i][0] != '\0' && strcmp(table.muscle[i], input->muscle->name) != 0;
+        struct message reason;
+        if (other || recruitment_takes_current(law, table.pulse[i].current_ma, &reason) == STATUS_OK)
+            continue;
+        const size_t line = table.line[i];
+        pulses_free(&table);
+        return status_fail(why, STATUS_DOCUMENT, "%s:%zu:3: current_ma: %.600s", path, line, reason.text);
+    }
     input->pulses = malloc((table.pulses + 1) * sizeof *input->pulses);
     for (size_t i = 0; i < table.pulses && input->pulses; i++) {
         const bool other =

@@ -20,10 +20,10 @@ struct demand {
     double tolerance_percent, ripple_percent_max, droop_percent_max, rise_ms_max, overshoot_percent_max;
     double hold_ms, release_ms, rest_ms, start_ms;
     unsigned contractions, warm_up;
-    bool opening[4];     /* [1] single, [2] doublet, [3] triplet */
-    bool pattern[2];     /* [0] singles, [1] doublets */
-    bool ramp[3];        /* by enum ramp_shape */
-    unsigned vary;       /* VARY_* bits */
+    bool opening[4];                                     /* [1] single, [2] doublet, [3] triplet */
+    bool pattern[2];                                     /* [0] singles, [1] doublets */
+    bool ramp[3];                                        /* by enum ramp_shape */
+    unsigned vary;                                       /* VARY_* bits */
     struct range frequency_pps, duration_us, current_ma; /* what is fixed or bounded */
     enum demand_prefer prefer;
     bool has_stop_if;

@@ -1,4 +1,5 @@
-/* Hookup (`pulsewright-hookup-1`): which channel drives what. Keys: person, channels: [{channel, muscle, side, pad_cm2, return_pad_cm2}]. */
+/* Hookup (`pulsewright-hookup-1`): which channel drives what. Keys: person, channels: [{channel, muscle,
+ * side, pad_cm2, return_pad_cm2}]. */
 #ifndef PULSEWRIGHT_CORE_DOCUMENT_HOOKUP_H
 #define PULSEWRIGHT_CORE_DOCUMENT_HOOKUP_H
 #include "core/document/document.h"
@@ -7,7 +8,7 @@
 struct hookup_channel {
     unsigned channel; /* 1 .. */
     char muscle[NAME_SIZE];
-    char side[NAME_SIZE]; /* left | right | "" */
+    char side[NAME_SIZE];           /* left | right | "" */
     double pad_cm2, return_pad_cm2; /* NAN where absent */
 };
 struct hookup {

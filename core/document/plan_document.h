@@ -36,7 +36,7 @@ enum plan_why_reason {
 #define PLAN_WHY_ENUM(name, text) name,
     PLAN_WHY_TABLE(PLAN_WHY_ENUM)
 #undef PLAN_WHY_ENUM
-    PLAN_WHY_REASONS
+        PLAN_WHY_REASONS
 };
 const char *plan_why_text(enum plan_why_reason reason);
 
@@ -51,21 +51,24 @@ struct plan_recount {
     double mean_n_first, mean_n_last, mean_n_low, mean_n_high; /* low, high: over the block's contractions */
     double peak_n, ripple_percent, droop_percent, rise_ms, overshoot_percent; /* the worst in the block */
     double capacity, remaining_20, remaining_50;                              /* at the block's end */
-    double band_5_n, band_95_n; /* ensemble of the mean, first contraction of the block; NAN without uncertainty */
+    double band_5_n,
+        band_95_n; /* ensemble of the mean, first contraction of the block; NAN without uncertainty */
 };
 
 struct plan_block {
-    unsigned first, count; /* contractions, from 1, warm-ups included */
+    unsigned first, count;       /* contractions, from 1, warm-ups included */
     struct contraction settings; /* repeat = count; ramps with their pieces */
     struct plan_why why;
     bool warm_up;
     struct plan_recount recount;
 };
 
-/* The best length of one ramp shape, as tried on the first scored contraction: the losers beside the winner. */
+/* The best length of one ramp shape, as tried on the first scored contraction: the losers beside the winner.
+ */
 struct plan_ramp_trial {
     enum ramp_shape shape;
-    double ms, rise_ms, overshoot_percent, outside_n_s; /* outside_n_s: force-time integral outside the hold */
+    double ms, rise_ms, overshoot_percent,
+        outside_n_s; /* outside_n_s: force-time integral outside the hold */
     bool chosen;
 };
 enum { PLAN_RAMP_TRIALS_MAX = 3, PLAN_NOTES_MAX = 8 };
@@ -76,16 +79,18 @@ struct plan_channel {
     char side[NAME_SIZE];
     double pad_cm2, return_pad_cm2; /* NAN where absent */
     struct recruitment recruitment;
-    struct dose_limits limits; /* the effective ones, written in documents' units */
+    struct dose_limits limits;              /* the effective ones, written in documents' units */
     const char *limit_source[DOSE_FIGURES]; /* "person" | "stimulator" | "program" */
-    double force_cap_n; /* NAN: none */
-    double force_edge_n; /* recount: greatest upper 95 % edge of the ensemble's peak (without uncertainty the peak itself) */
-    double comfort_ma;  /* NAN: none */
+    double force_cap_n;                     /* NAN: none */
+    double force_edge_n; /* recount: greatest upper 95 % edge of the ensemble's peak (without uncertainty the
+                            peak itself) */
+    double comfort_ma;   /* NAN: none */
     double start_ms;
-    /* Several muscles: each channel's own demand and target. In a plan of one channel they equal the plan's. */
+    /* Several muscles: each channel's own demand and target. In a plan of one channel they equal the plan's.
+     */
     struct demand demand;
-    double target_n;        /* NAN: none (a compiled train) */
-    size_t ramp_trials;     /* 0 where none were tried (a compiled train) */
+    double target_n;    /* NAN: none (a compiled train) */
+    size_t ramp_trials; /* 0 where none were tried (a compiled train) */
     struct plan_ramp_trial ramp_trial[PLAN_RAMP_TRIALS_MAX];
     size_t blocks; /* 0 where not even one contraction can be given within the limits */
     struct plan_block *block;
@@ -95,9 +100,11 @@ struct plan {
     char person[NAME_SIZE];
     char goal[LINE_SIZE];
     char program[NAME_SIZE]; /* name and version that made it */
-    char profile_digest[2 * DIGEST_SIZE + 1], demand_digest[2 * DIGEST_SIZE + 1], stimulator_digest[2 * DIGEST_SIZE + 1];
-    struct demand demand; /* as planned, of the first channel; target resolved below. contractions 0: a compiled train, no demand */
-    double target_n;      /* NAN: none */
+    char profile_digest[2 * DIGEST_SIZE + 1], demand_digest[2 * DIGEST_SIZE + 1],
+        stimulator_digest[2 * DIGEST_SIZE + 1];
+    struct demand demand;      /* as planned, of the first channel; target resolved below. contractions 0: a
+                                  compiled train, no demand */
+    double target_n;           /* NAN: none */
     uint32_t common_period_us; /* channels that take turns; 0: none */
     struct stimulator stimulator;
     size_t channels;

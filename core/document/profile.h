@@ -37,7 +37,8 @@ struct profile_muscle {
     } found;
     size_t uncertainties;
     struct uncertainty_entry uncertainty[UNCERTAINTY_MAX];
-    double *covariance; /* uncertainties x uncertainties, of the logarithms, row by row; NULL where absent. Written by a fit. */
+    double *covariance; /* uncertainties x uncertainties, of the logarithms, row by row; NULL where absent.
+                           Written by a fit. */
 };
 
 struct profile {
@@ -50,8 +51,10 @@ enum status profile_parse(const struct document_bytes *bytes, struct profile *pr
 enum status profile_load(const char *path, struct profile *profile, struct message *why);
 void profile_print(const struct profile *profile, struct text_out *out);
 void profile_free(struct profile *profile);
-/* The muscle of that name; NULL and `why` (which names those there are) where it is not there. name NULL: the only one. */
-const struct profile_muscle *profile_muscle(const struct profile *profile, const char *name, struct message *why);
+/* The muscle of that name; NULL and `why` (which names those there are) where it is not there. name NULL: the
+ * only one. */
+const struct profile_muscle *profile_muscle(const struct profile *profile, const char *name,
+                                            struct message *why);
 /* Refuses by name what every command but `fit` needs: force and fatigue blocks. */
 enum status profile_muscle_usable(const struct profile_muscle *muscle, struct message *why);
 

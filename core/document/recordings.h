@@ -22,8 +22,8 @@ struct recording {
         char unit[NAME_SIZE];                   /* N | mN | kgf | lbf | N*m | V */
         double per_volt;                        /* NAN but with V */
     } signal;
-    double rested_ms;       /* NAN: fully rested */
-    double length_relative; /* NAN where absent */
+    double rested_ms;             /* NAN: fully rested */
+    double length_relative;       /* NAN where absent */
     char length_group[NAME_SIZE]; /* "" where absent */
     bool gain_free;
     bool hold_out;
@@ -34,7 +34,8 @@ struct recordings {
     struct recording *recording;
 };
 
-enum status recordings_parse(const struct document_bytes *bytes, struct recordings *recordings, struct message *why);
+enum status recordings_parse(const struct document_bytes *bytes, struct recordings *recordings,
+                             struct message *why);
 enum status recordings_load(const char *path, struct recordings *recordings, struct message *why);
 void recordings_print(const struct recordings *recordings, struct text_out *out);
 void recordings_free(struct recordings *recordings);

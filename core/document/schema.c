@@ -1,248 +1,16 @@
 /* Reading by schema. The goal of this code: one table says what a document may hold; a fault is told by
  * place, key, what it holds and what it may hold; nothing is half loaded. YAML 1.2 by libfyaml, used without
  * aliases and tags; numbers are strict decimals. */
-#include "core/document/schema.h"
+#include "core/document/schema_reading.h"
 
-#include <libfyaml.h>
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
-enum { PATH_TEXT = 256, PLACES_MAX = 400000, DEPTH_MAX = 12 };
-
-struct place {
-    char *path;
-    int line, column;
-};
-
-struct reading {
-    const struct document_bytes *bytes;
-    struct message *why;
-    struct place *place;
-    size_t places, capacity;
-    int depth;
-};
-
 static void *at(void *object, size_t offset)
 {
     return (char *)object + offset;
-}
-
-static struct fy_token *first_token(struct fy_node *node)
-{
-    for (int guard = 0; node && guard < 64; guard++) {
-        if (fy_node_is_scalar(node)) return fy_node_get_scalar_token(node);
-        void *previous = NULL;
-        if (fy_node_is_mapping(node)) {
-            struct fy_node_pair *pair = fy_node_mapping_iterate(node, &previous);
-            node = pair ? fy_node_pair_key(pair) : NULL;
-        } else {
-            node = fy_node_sequence_iterate(node, &previous);
-        }
-    }
-    return NULL;
-}
-
-void schema_note(struct reading *reading, const char *path, struct fy_node *node)
-{
-    if (reading->places >= PLACES_MAX) return;
-    if (reading->places == reading->capacity) {
-        const size_t capacity = reading->capacity ? 2 * reading->capacity : 128;
-        struct place *grown = realloc(reading->place, capacity * sizeof *grown);
-        if (!grown) return;
-        reading->place = grown;
-        reading->capacity = capacity;
-    }
-    struct place place = {.path = strdup(path), .line = 1, .column = 1};
-    struct fy_token *token = first_token(node);
-    const struct fy_mark *mark = token ? fy_token_start_mark(token) : NULL;
-    if (mark) {
-        place.line = mark->line + 1;
-        place.column = mark->column + 1;
-        const char *data = reading->bytes->data; /* a quoted text's mark stands behind its quote */
-        if (mark->input_pos > 0 && mark->input_pos <= reading->bytes->size && mark->column > 0 &&
-            (data[mark->input_pos - 1] == '"' || data[mark->input_pos - 1] == '\''))
-            place.column--;
-    }
-    if (place.path) reading->place[reading->places++] = place;
-}
-
-/* The newest place noted under this path. */
-static const struct place *place_of(const struct reading *reading, const char *path)
-{
-    for (size_t i = reading->places; i-- > 0;)
-        if (strcmp(reading->place[i].path, path) == 0) return &reading->place[i];
-    return NULL;
-}
-
-bool schema_given(const struct reading *reading, const char *path)
-{
-    return place_of(reading, path) != NULL;
-}
-
-const char *schema_path(const char *path, const char *key, char buffer[256])
-{
-    char joined[PATH_TEXT];
-    (void)snprintf(joined, sizeof joined, "%s%s%s", path, path[0] ? "." : "", key);
-    memcpy(buffer, joined, sizeof joined);
-    return buffer;
-}
-
-enum status schema_fault(struct reading *reading, const char *path, const char *format, ...)
-{
-    /* the key's own place, else that of the nearest map around it */
-    char around[PATH_TEXT];
-    (void)snprintf(around, sizeof around, "%s", path);
-    const struct place *place = place_of(reading, around);
-    while (!place && around[0]) {
-        char *dot = strrchr(around, '.');
-        char *bracket = strrchr(around, '[');
-        char *end = dot > bracket ? dot : bracket;
-        if (end)
-            *end = '\0';
-        else
-            around[0] = '\0';
-        place = place_of(reading, around);
-    }
-    char text[MESSAGE_SIZE / 2];
-    va_list list;
-    va_start(list, format);
-    (void)vsnprintf(text, sizeof text, format, list);
-    va_end(list);
-    for (char *c = text; *c; c++)
-        if (*c == '\n' || *c == '\r') *c = ' ';
-    return status_fail(reading->why, STATUS_DOCUMENT, "%s:%d:%d: %s: %s", reading->bytes->path,
-                       place ? place->line : 1, place ? place->column : 1, path[0] ? path : "document", text);
-}
-
-bool number_read(const char *text, size_t length, double *value)
-{
-    char copy[64];
-    if (length == 0 || length >= sizeof copy) return false;
-    memcpy(copy, text, length);
-    copy[length] = '\0';
-    const char *c = copy;
-    if (*c == '+' || *c == '-') c++;
-    int digits = 0;
-    for (; *c >= '0' && *c <= '9'; c++) digits++;
-    if (*c == '.')
-        for (c++; *c >= '0' && *c <= '9'; c++) digits++;
-    if (digits == 0) return false;
-    if (*c == 'e' || *c == 'E') {
-        c++;
-        if (*c == '+' || *c == '-') c++;
-        if (!(*c >= '0' && *c <= '9')) return false;
-        while (*c >= '0' && *c <= '9') c++;
-    }
-    if (*c != '\0') return false;
-    const double read = strtod(copy, NULL);
-    if (!isfinite(read)) return false;
-    *value = read;
-    return true;
-}
-
-/* What a node holds, in few words for a message. */
-static const char *holds(struct fy_node *node, char buffer[96])
-{
-    size_t length = 0;
-    const char *text = fy_node_is_scalar(node) ? fy_node_get_scalar(node, &length) : NULL;
-    if (fy_node_is_mapping(node))
-        (void)snprintf(buffer, 96, "holds a map");
-    else if (fy_node_is_sequence(node))
-        (void)snprintf(buffer, 96, "holds a list");
-    else if (!text || length == 0)
-        (void)snprintf(buffer, 96, "holds nothing");
-    else
-        (void)snprintf(buffer, 96, "holds %.*s%s", (int)(length > 60 ? 60 : length), text,
-                       length > 60 ? ".." : "");
-    return buffer;
-}
-
-static const char *number_range(double least, double most, bool above_least, char buffer[96])
-{
-    char low[32], high[32];
-    number_text(least, low);
-    number_text(most, high);
-    if (isinf(most))
-        (void)snprintf(buffer, 96, "%s%s", above_least ? "above " : "from ", low);
-    else if (isinf(least))
-        (void)snprintf(buffer, 96, "up to %s", high);
-    else
-        (void)snprintf(buffer, 96, "%s%s to %s", above_least ? "above " : "from ", low, high);
-    return buffer;
-}
-
-static bool plain_scalar(struct fy_node *node, const char **text, size_t *length)
-{
-    if (!fy_node_is_scalar(node) || fy_node_is_alias(node) || fy_node_get_style(node) != FYNS_PLAIN)
-        return false;
-    *text = fy_node_get_scalar(node, length);
-    return *text != NULL;
-}
-
-enum status schema_read_number(struct reading *reading, struct fy_node *node, const char *path, double least,
-                               double most, bool above_least, double *value)
-{
-    char held[96], range[96];
-    const char *text = NULL;
-    size_t length = 0;
-    double read = 0;
-    if (!plain_scalar(node, &text, &length) || !number_read(text, length, &read) || read < least ||
-        read > most || (above_least && !(read > least)))
-        return schema_fault(reading, path, "%s, may hold a number %s", holds(node, held),
-                            number_range(least, most, above_least, range));
-    *value = read;
-    return STATUS_OK;
-}
-
-/* Valid UTF-8 without control characters (Unicode 15, table 3-7). */
-static bool readable(const char *text, size_t length)
-{
-    for (size_t i = 0; i < length;) {
-        const unsigned char c = (unsigned char)text[i];
-        const size_t more = c < 0x80                ? 0
-                            : c >= 0xC2 && c < 0xE0 ? 1
-                            : c >= 0xE0 && c < 0xF0 ? 2
-                            : c >= 0xF0 && c < 0xF5 ? 3
-                                                    : 9;
-        if (c < 0x20 || c == 0x7F || more == 9 || i + more >= length + (more == 0)) return false;
-        for (size_t k = 1; k <= more; k++)
-            if (((unsigned char)text[i + k] & 0xC0) != 0x80) return false;
-        if (c == 0xC2 && (unsigned char)text[i + 1] < 0xA0) return false; /* C1 controls */
-        i += more + 1;
-    }
-    return true;
-}
-
-enum status schema_read_text(struct reading *reading, struct fy_node *node, const char *path, char *text,
-                             size_t size)
-{
-    char held[96];
-    size_t length = 0;
-    const char *scalar =
-        fy_node_is_scalar(node) && !fy_node_is_alias(node) ? fy_node_get_scalar(node, &length) : NULL;
-    if (!scalar || length == 0 || length >= size || memchr(scalar, '\0', length) || !readable(scalar, length))
-        return schema_fault(reading, path, "%s, may hold a line of 1 to %zu characters", holds(node, held),
-                            size - 1);
-    memcpy(text, scalar, length);
-    text[length] = '\0';
-    return STATUS_OK;
-}
-
-static enum status read_code(struct reading *reading, struct fy_node *node, const char *path, char *text,
-                             size_t size)
-{
-    const enum status status = schema_read_text(reading, node, path, text, size);
-    if (status != STATUS_OK) return status;
-    for (const char *c = text; *c; c++) {
-        const bool letter = (*c >= 'a' && *c <= 'z') || (*c >= 'A' && *c <= 'Z') || (*c >= '0' && *c <= '9');
-        if (letter || (c > text && (*c == '-' || *c == '_' || *c == '.'))) continue;
-        return schema_fault(reading, path,
-                            "holds %s, may hold a code of letters, digits and dashes, no name of a person",
-                            text);
-    }
-    return STATUS_OK;
 }
 
 static enum status read_choice(struct reading *reading, struct fy_node *node, const char *path,
@@ -263,7 +31,7 @@ static enum status read_choice(struct reading *reading, struct fy_node *node, co
         const size_t used = strlen(may);
         (void)snprintf(may + used, sizeof may - used, "%s%s", used ? " | " : "", field->choices[i]);
     }
-    return schema_fault(reading, path, "%s, may hold %s", holds(node, held), may);
+    return schema_fault(reading, path, "%s, may hold %s", schema_holds(node, held), may);
 }
 
 static enum status read_choices(struct reading *reading, struct fy_node *node, const char *path,
@@ -271,7 +39,7 @@ static enum status read_choices(struct reading *reading, struct fy_node *node, c
 {
     char held[96], item_path[PATH_TEXT];
     if (!fy_node_is_sequence(node) || fy_node_sequence_item_count(node) < 1)
-        return schema_fault(reading, path, "%s, may hold a list such as [%s]", holds(node, held),
+        return schema_fault(reading, path, "%s, may hold a list such as [%s]", schema_holds(node, held),
                             field->choices[0][0] ? field->choices[0] : field->choices[1]);
     unsigned bits = 0;
     void *previous = NULL;
@@ -306,7 +74,7 @@ static enum status read_list(struct reading *reading, struct fy_node *node, cons
     const int items = fy_node_is_sequence(node) ? fy_node_sequence_item_count(node) : -1;
     if (items < 0 || items < field->least || items > field->most)
         return schema_fault(reading, path, "%s%s, may hold a list of %g to %g",
-                            items < 0 ? holds(node, held) : "holds a list",
+                            items < 0 ? schema_holds(node, held) : "holds a list",
                             items < 0    ? ""
                             : items == 0 ? " of none"
                                          : " of another length",
@@ -342,7 +110,8 @@ static enum status read_fixed(struct reading *reading, struct fy_node *node, con
     const double scaled = number * field->scale, whole = round(scaled);
     char held[96];
     if (fabs(scaled - whole) > 1e-6 + 1e-12 * whole)
-        return schema_fault(reading, path, "%s, may hold steps of %g", holds(node, held), 1 / field->scale);
+        return schema_fault(reading, path, "%s, may hold steps of %g", schema_holds(node, held),
+                            1 / field->scale);
     if (field->type == FIELD_FIXED)
         *(uint32_t *)at(object, field->offset) = (uint32_t)whole;
     else
@@ -393,7 +162,7 @@ static enum status read_date(struct reading *reading, struct fy_node *node, cons
         text[length] = '\0';
         if (date_read(text, date)) return STATUS_OK;
     }
-    return schema_fault(reading, path, "%s, may hold a day YYYY-MM-DD", holds(node, held));
+    return schema_fault(reading, path, "%s, may hold a day YYYY-MM-DD", schema_holds(node, held));
 }
 
 static enum status read_count(struct reading *reading, struct fy_node *node, const char *path,
@@ -403,10 +172,10 @@ static enum status read_count(struct reading *reading, struct fy_node *node, con
     char held[96];
     const char *text = NULL;
     size_t length = 0;
-    if (!plain_scalar(node, &text, &length) || !number_read(text, length, &number) || number < field->least ||
-        number > field->most || fabs(number - round(number)) > 0)
-        return schema_fault(reading, path, "%s, may hold a whole number from %.0f to %.0f", holds(node, held),
-                            field->least, field->most);
+    if (!schema_plain_scalar(node, &text, &length) || !number_read(text, length, &number) ||
+        number < field->least || number > field->most || fabs(number - round(number)) > 0)
+        return schema_fault(reading, path, "%s, may hold a whole number from %.0f to %.0f",
+                            schema_holds(node, held), field->least, field->most);
     *count = (unsigned)number;
     return STATUS_OK;
 }
@@ -424,7 +193,7 @@ static enum status read_field(struct reading *reading, struct fy_node *node, con
     case FIELD_FIXED:
     case FIELD_FIXED64: return read_fixed(reading, node, path, field, object);
     case FIELD_TEXT: return schema_read_text(reading, node, path, target, field->size);
-    case FIELD_CODE: return read_code(reading, node, path, target, field->size);
+    case FIELD_CODE: return schema_read_code(reading, node, path, target, field->size);
     case FIELD_CHOICE:
         status = read_choice(reading, node, path, field, &choice);
         memcpy(target, &choice, sizeof choice);
@@ -499,7 +268,7 @@ static enum status read_pair(struct reading *reading, struct fy_node_pair *pair,
     char key_path[PATH_TEXT], text[64];
     size_t length = 0;
     const char *name = key && fy_node_is_scalar(key) ? fy_node_get_scalar(key, &length) : NULL;
-    if (!name || length == 0 || length >= sizeof text || !readable(name, length)) {
+    if (!name || length == 0 || length >= sizeof text || !schema_readable(name, length)) {
         schema_note(reading, path, key);
         return schema_fault(reading, path, "holds a key that is no word, may hold the keys of %s",
                             schema->name);
@@ -513,7 +282,7 @@ static enum status read_pair(struct reading *reading, struct fy_node_pair *pair,
         return STATUS_OK;
     }
     const struct field *field = field_of(schema, name, length);
-    const struct place *before = place_of(reading, key_path);
+    const struct place *before = schema_place_of(reading, key_path);
     const int first_line = before ? before->line : 0;
     if (!field && path[0] == '\0' && strcmp(text, "format") == 0) {
         schema_note(reading, key_path, key);
@@ -527,7 +296,7 @@ static enum status read_pair(struct reading *reading, struct fy_node_pair *pair,
                             first_line);
     }
     *seen |= (uint64_t)1 << (field - schema->fields);
-    schema_note(reading, key_path, value && first_token(value) ? value : key);
+    schema_note(reading, key_path, value && schema_first_token(value) ? value : key);
     if (!value)
         return schema_fault(reading, key_path, "holds nothing, may hold %s",
                             field->help ? field->help : "a value");
@@ -542,7 +311,8 @@ static enum status read_map(struct reading *reading, struct fy_node *node, const
     char held[96], key_path[PATH_TEXT];
     set_absent(schema, object);
     if (!fy_node_is_mapping(node) || fy_node_is_alias(node))
-        return schema_fault(reading, path, "%s, may hold the keys of %s", holds(node, held), schema->name);
+        return schema_fault(reading, path, "%s, may hold the keys of %s", schema_holds(node, held),
+                            schema->name);
     if (++reading->depth > DEPTH_MAX) return schema_fault(reading, path, "is nested too deep");
     uint64_t seen = 0;
     void *previous = NULL;
@@ -606,7 +376,7 @@ static enum status read_root(struct reading *reading, struct fy_node *root, cons
     const char *text = value && fy_node_is_scalar(value) ? fy_node_get_scalar(value, &length) : NULL;
     if (!text || strlen(envelope->format) != length || memcmp(text, envelope->format, length) != 0)
         return schema_fault(reading, "format", "%s, may hold %s",
-                            value ? holds(value, held) : "holds nothing", envelope->format);
+                            value ? schema_holds(value, held) : "holds nothing", envelope->format);
     return read_map(reading, root, "", envelope->schema, object);
 }
 
@@ -630,11 +400,23 @@ void schema_free(const struct schema *schema, void *object)
     if (schema->free) schema->free(object);
 }
 
+const void *schema_context(const struct reading *reading)
+{
+    return reading->context;
+}
+
 enum status schema_parse(const struct schema *schema, const char *format, const struct document_bytes *bytes,
                          void *object, struct message *why)
 {
+    return schema_parse_with(schema, format, bytes, object, NULL, why);
+}
+
+enum status schema_parse_with(const struct schema *schema, const char *format,
+                              const struct document_bytes *bytes, void *object, const void *context,
+                              struct message *why)
+{
     memset(object, 0, schema->size);
-    struct reading reading = {.bytes = bytes, .why = why};
+    struct reading reading = {.bytes = bytes, .why = why, .context = context};
     struct fy_diag_cfg diag_configuration;
     fy_diag_cfg_default(&diag_configuration);
     struct fy_diag *diag = fy_diag_create(&diag_configuration);

@@ -68,6 +68,11 @@ struct schema {
  * nothing. */
 enum status schema_parse(const struct schema *schema, const char *format, const struct document_bytes *bytes,
                          void *object, struct message *why);
+/* The same, with something that checks may ask for by schema_context (NULL by schema_parse). */
+enum status schema_parse_with(const struct schema *schema, const char *format,
+                              const struct document_bytes *bytes, void *object, const void *context,
+                              struct message *why);
+const void *schema_context(const struct reading *reading);
 void schema_print(const struct schema *schema, const char *format, const void *object, struct text_out *out);
 void schema_free(const struct schema *schema, void *object);
 

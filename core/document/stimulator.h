@@ -1,4 +1,5 @@
-/* Stimulator (`pulsewright-stimulator-1`): what a device can give, in its own steps. Also the `stimulator:` part of a plan. */
+/* Stimulator (`pulsewright-stimulator-1`): what a device can give, in its own steps. Also the `stimulator:`
+ * part of a plan. */
 #ifndef PULSEWRIGHT_CORE_DOCUMENT_STIMULATOR_H
 #define PULSEWRIGHT_CORE_DOCUMENT_STIMULATOR_H
 #include "core/document/document.h"
@@ -32,7 +33,8 @@ struct stimulator {
     unsigned baud;
 };
 
-enum status stimulator_parse(const struct document_bytes *bytes, struct stimulator *stimulator, struct message *why);
+enum status stimulator_parse(const struct document_bytes *bytes, struct stimulator *stimulator,
+                             struct message *why);
 enum status stimulator_load(const char *path, struct stimulator *stimulator, struct message *why);
 void stimulator_print(const struct stimulator *stimulator, struct text_out *out);
 struct train_grid stimulator_grid(const struct stimulator *stimulator);

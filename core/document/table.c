@@ -227,6 +227,7 @@ static enum status fill_pulses(const struct table *table, const char *path, stru
         if ((status = table_number(table, path, row, column[2], 0, 1000, &pulse->current_ma, why)) !=
             STATUS_OK)
             break;
+        pulses->line[row] = table->line[row];
         if ((status = read_channel(table, path, row, pulses, why)) != STATUS_OK) break;
         status = check_order(pulses, table, path, row, column[0], last, why);
     }
@@ -239,10 +240,12 @@ enum status pulses_parse(const struct document_bytes *bytes, struct pulses_table
     *pulses = (struct pulses_table){0};
     enum status status = table_parse(bytes, &table, why);
     if (status != STATUS_OK) return status;
-    struct pulses_table made = {.pulses = table.rows, .pulse = calloc(table.rows + 1, sizeof *made.pulse)};
+    struct pulses_table made = {.pulses = table.rows,
+                                .pulse = calloc(table.rows + 1, sizeof *made.pulse),
+                                .line = calloc(table.rows + 1, sizeof *made.line)};
     if (table_column(&table, "channel") >= 0) made.channel = calloc(table.rows + 1, sizeof *made.channel);
     if (table_column(&table, "muscle") >= 0) made.muscle = calloc(table.rows + 1, sizeof *made.muscle);
-    const bool memory = made.pulse && (made.channel || table_column(&table, "channel") < 0) &&
+    const bool memory = made.pulse && made.line && (made.channel || table_column(&table, "channel") < 0) &&
                         (made.muscle || table_column(&table, "muscle") < 0);
     status = memory ? fill_pulses(&table, bytes->path, &made, why)
                     : status_fail(why, STATUS_INTERNAL, "%s: no memory", bytes->path);
@@ -286,6 +289,7 @@ void pulses_free(struct pulses_table *pulses)
     free(pulses->pulse);
     free(pulses->channel);
     free(pulses->muscle);
+    free(pulses->line);
     *pulses = (struct pulses_table){0};
 }
 

@@ -1,5 +1,5 @@
-/* Tables (CSV, RFC 4180, header row): pulses, traces, motions. Numbers are written with 17 significant digits where needed;
- * readers ignore further columns; a bad cell is told by file:line:column. */
+/* Tables (CSV, RFC 4180, header row): pulses, traces, motions. Numbers are written with 17 significant digits
+ * where needed; readers ignore further columns; a bad cell is told by file:line:column. */
 #ifndef PULSEWRIGHT_CORE_DOCUMENT_TABLE_H
 #define PULSEWRIGHT_CORE_DOCUMENT_TABLE_H
 #include "core/document/document.h"
@@ -10,10 +10,12 @@
 struct pulses_table {
     size_t pulses;
     struct train_pulse *pulse;
-    unsigned *channel;        /* NULL where there is no such column */
+    unsigned *channel;         /* NULL where there is no such column */
     char (*muscle)[NAME_SIZE]; /* NULL where there is no such column */
+    size_t *line;              /* of each row in the file; NULL in a table that was not read */
 };
-/* Rows in ascending time, at least 1 us apart on a channel, durations and currents finite and not negative. */
+/* Rows in ascending time, at least 1 us apart on a channel, durations and currents finite and not negative.
+ */
 enum status pulses_parse(const struct document_bytes *bytes, struct pulses_table *table, struct message *why);
 enum status pulses_load(const char *path, struct pulses_table *table, struct message *why);
 /* approval: text of the last column on every row, NULL: no such column. */
@@ -36,7 +38,7 @@ void table_free(struct table *table);
 /* Index of a column, -1 where there is none. */
 long table_column(const struct table *table, const char *name);
 /* A cell as a strict decimal within a range; the message names file, line and column (the cell's number). */
-enum status table_number(const struct table *table, const char *path, size_t row, size_t column, double least, double most, double *value,
-                         struct message *why);
+enum status table_number(const struct table *table, const char *path, size_t row, size_t column, double least,
+                         double most, double *value, struct message *why);
 
 #endif

@@ -163,6 +163,13 @@ static enum status check_contraction(struct reading *reading, const char *path, 
 {
     const CN *contraction = object;
     char key[256];
+    const struct recruitment *law = schema_context(reading);
+    if (law && law->law == RECRUITMENT_DURATION_EXPONENTIAL &&
+        fabs(contraction->current_ma - law->current_ma) > 1e-9)
+        return schema_fault(
+            reading, schema_path(path, "current_ma", key),
+            "holds %g, may hold %g: the muscle's duration-exponential law holds at that current only",
+            contraction->current_ma, law->current_ma);
     if (contraction->gaps) return check_free(reading, path, contraction);
     if (isnan(contraction->frequency_pps))
         return schema_fault(reading, schema_path(path, "frequency_pps", key),
@@ -218,19 +225,31 @@ static enum status check_train(struct reading *reading, const char *path, void *
 const struct schema train_schema = {
     .name = "a train", .size = sizeof(struct train), .fields = train_fields, .check = check_train};
 
-enum status train_parse(const struct document_bytes *bytes, struct train *train, struct message *why)
+enum status train_parse_for(const struct document_bytes *bytes, const struct recruitment *law,
+                            struct train *train, struct message *why)
 {
-    return schema_parse(&train_schema, document_kind_format(DOCUMENT_TRAIN), bytes, train, why);
+    return schema_parse_with(&train_schema, document_kind_format(DOCUMENT_TRAIN), bytes, train, law, why);
 }
 
-enum status train_load(const char *path, struct train *train, struct message *why)
+enum status train_parse(const struct document_bytes *bytes, struct train *train, struct message *why)
+{
+    return train_parse_for(bytes, NULL, train, why);
+}
+
+enum status train_load_for(const char *path, const struct recruitment *law, struct train *train,
+                           struct message *why)
 {
     struct document_bytes bytes;
     enum status status = document_read_bytes(path, &bytes, why);
     if (status != STATUS_OK) return status;
-    status = train_parse(&bytes, train, why);
+    status = train_parse_for(&bytes, law, train, why);
     document_bytes_free(&bytes);
     return status;
+}
+
+enum status train_load(const char *path, struct train *train, struct message *why)
+{
+    return train_load_for(path, NULL, train, why);
 }
 
 void train_print(const struct train *train, struct text_out *out)

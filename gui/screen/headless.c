@@ -59,11 +59,14 @@ static bool post_line(struct ui *ui, const char *line)
     return true;
 }
 
+/* Frames until every event has been in one. */
 static void one_frame(const struct window_run *run, struct ui *ui)
 {
-    ui_begin(ui, run->width, run->height, run->width >= 3000 ? 2 : 1);
-    run->turn(run->context, ui);
-    ui_end(ui);
+    do {
+        ui_begin(ui, run->width, run->height, run->width >= 3000 ? 2 : 1);
+        run->turn(run->context, ui);
+        ui_end(ui);
+    } while (ui_pending(ui));
 }
 
 static enum status play(const struct window_run *run, struct ui *ui, const char *script, struct message *why)

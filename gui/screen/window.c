@@ -105,13 +105,6 @@ static void draw(struct screen *screen, struct ui *ui, const struct window_run *
     SDL_RenderPresent(screen->renderer);
 }
 
-/* A key may move the focus or end an edit, which happens at the end of a frame: what was typed after it belongs to the
- * next frame, else digits typed behind a Tab are lost when a frame is slow. */
-static bool ends_frame(const SDL_Event *event)
-{
-    return event->type == SDL_KEYDOWN && key_of(&event->key.keysym) != UI_KEY_NONE;
-}
-
 /* Waits for something to happen, takes all that did, up to a key. A frame more follows each event, so that what it
  * changed is seen by every widget. */
 static bool wait_for_events(struct screen *screen, struct ui *ui, bool again)
@@ -121,7 +114,7 @@ static bool wait_for_events(struct screen *screen, struct ui *ui, bool again)
     const bool any = some;
     while (some) {
         take(screen, ui, &event);
-        some = !ends_frame(&event) && ui->events < UI_EVENTS_MAX / 2 && SDL_PollEvent(&event) != 0;
+        some = ui->posts < UI_EVENTS_MAX / 2 && SDL_PollEvent(&event) != 0;
     }
     return any;
 }
@@ -144,11 +137,15 @@ enum status window_main(const struct window_run *run, struct message *why)
     if (status == STATUS_OK && !screen.renderer)
         status = status_fail(why, STATUS_DEVICE, "no window: %s", SDL_GetError());
     if (screen.window) SDL_SetWindowMinimumSize(screen.window, 800, 560);
-    int settling = 2; /* frames still to draw: one more follows each event, then nothing is drawn until the next */
-    for (long frame = 0; status == STATUS_OK && !screen.closed && (run->frames < 0 || frame < run->frames); frame++) {
+    int settling =
+        2; /* frames still to draw: one more follows each event, then nothing is drawn until the next */
+    for (long frame = 0; status == STATUS_OK && !screen.closed && (run->frames < 0 || frame < run->frames);
+         frame++) {
         if (!fit(&screen)) break;
         if (settling > 0) draw(&screen, ui, run);
-        settling = wait_for_events(&screen, ui, settling > 1) ? 2 : settling > 0 ? settling - 1 : 0;
+        settling = wait_for_events(&screen, ui, settling > 1 || ui_pending(ui)) || ui_pending(ui) ? 2
+                   : settling > 0 ? settling - 1
+                                  : 0;
     }
     if (status == STATUS_OK && run->picture && screen.surface &&
         cairo_surface_write_to_png(screen.surface, run->picture) != CAIRO_STATUS_SUCCESS)

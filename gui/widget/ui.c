@@ -15,7 +15,29 @@ void ui_init(struct ui *ui)
 
 void ui_post(struct ui *ui, struct ui_event event)
 {
-    if (ui->events < UI_EVENTS_MAX) ui->event[ui->events++] = event;
+    if (ui->posts < UI_EVENTS_MAX) ui->posted[ui->posts++] = event;
+}
+
+bool ui_pending(const struct ui *ui)
+{
+    return ui->posts > 0;
+}
+
+static bool moves_focus(const struct ui_event *event)
+{
+    return event->kind == UI_EVENT_PRESS || event->kind == UI_EVENT_RELEASE ||
+           (event->kind == UI_EVENT_KEY && (event->key == UI_KEY_TAB || event->key == UI_KEY_BACK_TAB));
+}
+
+static void take_posted(struct ui *ui)
+{
+    size_t count = 0;
+    while (count < ui->posts && !moves_focus(&ui->posted[count])) count++;
+    if (count < ui->posts) count++;
+    memcpy(ui->event, ui->posted, count * sizeof *ui->event);
+    ui->events = count;
+    ui->posts -= count;
+    memmove(ui->posted, ui->posted + count, ui->posts * sizeof *ui->posted);
 }
 
 /* Keys that move the focus are taken first; a typed value is kept until its own field sees them. */
@@ -41,6 +63,7 @@ void ui_begin(struct ui *ui, double width, double height, double scale)
     ui->width = width;
     ui->height = height;
     ui->scale = scale;
+    take_posted(ui);
     move_focus(ui);
 }
 

@@ -69,7 +69,9 @@ struct ui_event {
 struct ui {
     struct ui_command command[UI_COMMANDS_MAX];
     size_t commands;
-    double width, height, scale;          /* scale: 1 is 14 px text */
+    double width, height, scale;           /* scale: 1 is 14 px text */
+    struct ui_event posted[UI_EVENTS_MAX]; /* not yet in a frame */
+    size_t posts;
     struct ui_event event[UI_EVENTS_MAX]; /* of this frame */
     size_t events;
     double pointer_x, pointer_y;
@@ -82,7 +84,10 @@ struct ui {
 };
 
 void ui_init(struct ui *ui);
-void ui_post(struct ui *ui, struct ui_event event); /* for the coming frame */
+void ui_post(struct ui *ui, struct ui_event event); /* for the coming frames */
+/* Events wait still: one that moves the focus ends a frame, so that what was typed after it reaches the right
+ * field. */
+bool ui_pending(const struct ui *ui);
 void ui_begin(struct ui *ui, double width, double height, double scale);
 void ui_end(struct ui *ui);                        /* forgets the frame's events */
 bool ui_key_taken(struct ui *ui, enum ui_key key); /* this key was typed in this frame and is taken now */

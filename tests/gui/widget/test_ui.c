@@ -10,14 +10,17 @@ static int opening;
 static const char *const openings[] = {"single", "doublet", NULL};
 static const struct ui_box first = {0, 0, 200, 20}, second = {0, 30, 200, 20}, third = {0, 60, 200, 20};
 
+/* Frames until no event waits. */
 static bool one_frame(void)
 {
     bool changed = false;
-    ui_begin(&ui, 300, 200, 1);
-    changed |= ui_number(&ui, first, "Frequency", "Hz", 1, 100, 1, &frequency);
-    changed |= ui_number(&ui, second, "Current", "mA", 0, 80, 0.5, &current);
-    changed |= ui_choice(&ui, third, "Opening", openings, &opening);
-    ui_end(&ui);
+    do {
+        ui_begin(&ui, 300, 200, 1);
+        changed |= ui_number(&ui, first, "Frequency", "Hz", 1, 100, 1, &frequency);
+        changed |= ui_number(&ui, second, "Current", "mA", 0, 80, 0.5, &current);
+        changed |= ui_choice(&ui, third, "Opening", openings, &opening);
+        ui_end(&ui);
+    } while (ui_pending(&ui));
     return changed;
 }
 
@@ -84,6 +87,20 @@ static void out_of_range_says_why_and_changes_nothing(void **state)
     post_key(UI_KEY_ENTER);
     assert_true(one_frame());
     assert_string_equal(ui.complaint, "");
+}
+
+static void what_is_typed_after_a_tab_reaches_the_next_field_however_fast(void **state)
+{
+    (void)state;
+    begin();
+    post_key(UI_KEY_TAB);
+    type("25");
+    post_key(UI_KEY_TAB);
+    type("12.5");
+    post_key(UI_KEY_ENTER);
+    assert_true(one_frame());
+    assert_near(frequency, 25, 0, 0);
+    assert_near(current, 12.5, 0, 0);
 }
 
 static void escape_leaves_the_value(void **state)
@@ -194,6 +211,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(typing_three_five_enter_sets_thirty_five),
         cmocka_unit_test(out_of_range_says_why_and_changes_nothing),
+        cmocka_unit_test(what_is_typed_after_a_tab_reaches_the_next_field_however_fast),
         cmocka_unit_test(escape_leaves_the_value),
         cmocka_unit_test(tab_enters_what_was_typed_and_moves_on),
         cmocka_unit_test(arrows_and_wheel_step_and_stay_in_range),
