@@ -214,7 +214,9 @@ static enum status follow(const struct record_reader *reader, const struct recor
     if ((entry->kind == RECORD_BEGIN) != (entry->session == entry->n))
         return status_fail(why, STATUS_REFUSED, "%s: entry %llu (%s) says it is of session %llu",
                            reader->path, n, word, session);
-    if (!payload->data) return STATUS_OK;
+    if (!payload->data)
+        return status_fail(why, STATUS_REFUSED, "%s: entry %llu (%s of session %llu): what it holds is gone",
+                           reader->path, n, word, session);
     record_digest(salt, payload->data, payload->size, digest);
     if (memcmp(digest, entry->digest, sizeof digest) != 0)
         return status_fail(why, STATUS_REFUSED,
@@ -266,7 +268,6 @@ static enum status follow_all(struct record_reader *reader, const char *head,
         memcpy(chain, entry.chain, sizeof chain);
         findings->entries++;
         if (entry.kind == RECORD_BEGIN) findings->sessions++;
-        if (!payload.data) findings->left_out++;
         record_hex(chain, findings->head);
         if (head && strcmp(head, findings->head) == 0) {
             findings->head_found = true;

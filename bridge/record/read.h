@@ -8,7 +8,7 @@ struct record_reader;
 enum status record_open(const char *path, struct record_reader **reader, struct message *why);
 void record_close(struct record_reader *reader);
 
-/* A session at a glance. Texts are empty where a payload was left out. */
+/* A session at a glance. Texts are empty where a payload is gone. */
 struct record_glance {
     uint64_t session, entries, begun_s, duration_us;
     char person[64], device[64], kind[32], approval[256], program[64], root[RECORD_HEAD_SIZE];
@@ -23,7 +23,7 @@ enum status record_sessions(struct record_reader *reader,
 
 struct record_payload {
     const struct record_entry *entry;
-    const uint8_t *data; /* NULL: left out (an anonymous copy) */
+    const uint8_t *data; /* NULL: gone */
     size_t size;
 };
 /* All entries of a session (0: of all) in order. */
@@ -37,7 +37,7 @@ void record_text(struct record_reader *reader, const struct record_payload *payl
                  char *text, size_t size);
 
 struct record_findings {
-    uint64_t entries, sessions, left_out; /* left_out: payloads that are not there; their digests are */
+    uint64_t entries, sessions;
     char head[RECORD_HEAD_SIZE];
     bool head_found;  /* of the one asked for */
     uint64_t head_at; /* the entry it belongs to */

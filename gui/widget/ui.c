@@ -23,16 +23,16 @@ bool ui_pending(const struct ui *ui)
     return ui->posts > 0;
 }
 
-static bool moves_focus(const struct ui_event *event)
+/* A press or a key may move the focus or end an edit. */
+static bool ends_frame(const struct ui_event *event)
 {
-    return event->kind == UI_EVENT_PRESS || event->kind == UI_EVENT_RELEASE ||
-           (event->kind == UI_EVENT_KEY && (event->key == UI_KEY_TAB || event->key == UI_KEY_BACK_TAB));
+    return event->kind == UI_EVENT_PRESS || event->kind == UI_EVENT_RELEASE || event->kind == UI_EVENT_KEY;
 }
 
 static void take_posted(struct ui *ui)
 {
     size_t count = 0;
-    while (count < ui->posts && !moves_focus(&ui->posted[count])) count++;
+    while (count < ui->posts && !ends_frame(&ui->posted[count])) count++;
     if (count < ui->posts) count++;
     memcpy(ui->event, ui->posted, count * sizeof *ui->event);
     ui->events = count;
