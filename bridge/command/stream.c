@@ -24,7 +24,7 @@ static const struct option options[] = {
     {"--record", "DB", "where the session is kept (needed on a real port)"},
     {"--strength-from", "PERCENT", "begin at this strength; raise it by hand (+), lower it (-)"},
     {"--from-contraction", "N", "take up again after a stop, at this contraction"},
-    {"--mark", "TEXT", "a note that goes into the record at the start"},
+    {"--mark", "TEXT", "a note (no quotes in it) that goes into the record at the start"},
     {"--flight", "FILE", "where the last frames go after a fault"},
     {"--log", "CSV", "with twin: every pulse it gave"},
     {"--faults", "FILE", "with twin: what goes wrong"},
@@ -95,6 +95,16 @@ static void change_strength(struct stream *stream, struct host *host, int key)
     note(stream, RECORD_EASE, 0, "{\"channel\": 255, \"thousandths\": %u}", stream->ease);
 }
 
+/* Marks by single keys, into the record. */
+static void mark(struct stream *stream, const struct host *host, int key)
+{
+    static const char *const marks[] = {"spasm", "pain", "blood pressure", "skin"};
+    if (key < '1' || key > '4') return;
+    note(stream, RECORD_MARK, host_clock_us() - host_start_host_us(host),
+         "{\"mark\": \"%s\", \"text\": \"\"}", marks[key - '1']);
+    fprintf(stderr, "\nmarked: %s\n", marks[key - '1']);
+}
+
 static void ask(struct stream *stream, const char *text)
 {
     if (stream->asked == text) return;
@@ -156,12 +166,16 @@ static bool turn(void *context, struct host *host, int key)
         if (!enter) return true;
         note(stream, stream->request.resume ? RECORD_RESUME : RECORD_START, 0, "{\"first\": %u}",
              stream->first);
+        if (argument(stream->arguments, "--mark"))
+            note(stream, RECORD_MARK, 0, "{\"mark\": \"note\", \"text\": \"%.120s\"}",
+                 argument(stream->arguments, "--mark"));
         stream->started = true;
         host_start(host);
         return true;
     }
     if (host_phase(host) == HOST_RUNNING) {
         change_strength(stream, host, key);
+        mark(stream, host, key);
         progress(stream, host);
     }
     return true;
@@ -336,6 +350,9 @@ static enum status prepare(struct stream *stream, struct signoff_file *file, str
                            "a rehearsal never plays on a real port: --rehearse takes pty: or twin:");
     enum status status = argument_number(arguments, "--strength-from", 0, 100, &strength);
     stream->ease = (unsigned)lround(strength * 10);
+    const char *words = argument(arguments, "--mark");
+    if (words && (strpbrk(words, "\"\\") || strlen(words) > 120))
+        return status_fail(why, STATUS_USAGE, "--mark may hold up to 120 characters without quotes");
     if (status == STATUS_OK) status = plans_add(&stream->plans, arguments->positional[0], arguments, why);
     if (status == STATUS_OK && argument_given(arguments, "--signoff")) {
         status = signoff_read(argument(arguments, "--signoff"), file, why);
@@ -387,7 +404,7 @@ const struct command command_stream = {
     .help = "For a person: the sign-off is verified, the person's code typed again, cautions shown; Enter "
             "arms, Enter starts. While it\n"
             "plays: Space is a stop request, - lowers the strength, + raises it back to at most what was "
-            "signed. Output ends within\n"
+            "signed, 1 to 4 mark spasm, pain, blood pressure, skin. Output ends within\n"
             "0.2 s when this program or the cable is gone. The emergency stop is a switch in series with the "
             "output.\n"
             "Exit 0: every pulse given; 3: refused, or stopped on request; 5: a fault of device or link, "
