@@ -114,7 +114,7 @@ static void print_text(const struct curves *c)
 #ifdef PULSEWRIGHT_FIGURES
 static void draw_curves(cairo_t *cairo, double width, double height, const void *curves)
 {
-    const struct figure_style style = {.dark = false, .scale = 1};
+    const struct figure_style style = {.approval = NOT_SIGNED_TEXT, .dark = false, .scale = 1};
     figure_curves_draw(cairo, width, height, curves, &style);
 }
 static enum status draw(const char *path, const struct curves *curves, bool replace, struct message *why)

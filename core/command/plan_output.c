@@ -279,7 +279,7 @@ void plan_output_text(const struct plan *plan)
 #ifdef PICTURES
 static void draw_session(cairo_t *cairo, double width, double height, const void *context)
 {
-    const struct figure_style style = {.dark = false, .scale = 1.0};
+    const struct figure_style style = {.approval = NOT_SIGNED_TEXT, .dark = false, .scale = 1.0};
     figure_session_draw(cairo, width, height, context, 1, &style);
 }
 #endif

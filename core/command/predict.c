@@ -87,7 +87,7 @@ static void print_text(const struct trace_summary *summary)
 #ifdef PULSEWRIGHT_FIGURES
 static void draw_score(cairo_t *cairo, double width, double height, const void *score)
 {
-    const struct figure_style style = {.dark = false, .scale = 1};
+    const struct figure_style style = {.approval = NOT_SIGNED_TEXT, .dark = false, .scale = 1};
     figure_score_draw(cairo, width, height, score, &style);
 }
 

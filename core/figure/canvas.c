@@ -94,6 +94,14 @@ bool box_meets(struct box a, struct box b)
     return a.x < b.x + b.width && b.x < a.x + a.width && a.y < b.y + b.height && b.y < a.y + a.height;
 }
 
+void canvas_foot(struct canvas *canvas, double height, const struct figure_style *style)
+{
+    if (!style || !style->approval) return;
+    canvas_ink(canvas, INK_TEXT, 1);
+    (void)canvas_text(canvas, style->approval, 8 * canvas->scale, height - 17 * canvas->scale, TEXT_LEFT, 0.8,
+                      true);
+}
+
 void canvas_take(struct canvas *canvas, struct box box)
 {
     if (canvas->labels < LABELS_MAX) canvas->label[canvas->labels++] = box;
@@ -156,6 +164,8 @@ struct axis axis_make(double low, double high, int most, bool from_zero, bool wi
     for (double tick = ceil(axis.low / step - 1e-9) * step;
          tick <= axis.high + 1e-9 * step && axis.ticks < TICKS_MAX; tick += step)
         axis.tick[axis.ticks++] = fabs(tick) < 1e-9 * step ? 0 : tick;
+    if (axis.ticks < 2 && most < TICKS_MAX - 2) /* a coarse step fell beside a short range: a finer one */
+        return axis_make(axis.low, axis.high, 2 * most, false, false);
     return axis;
 }
 

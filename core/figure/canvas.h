@@ -43,6 +43,8 @@ struct box canvas_text(struct canvas *canvas, const char *text, double x, double
  * nothing is drawn. */
 bool canvas_label(struct canvas *canvas, const char *text, double x, double y, struct box within,
                   enum ink ink);
+/* The style's approval, small, at the foot's left. */
+void canvas_foot(struct canvas *canvas, double height, const struct figure_style *style);
 void canvas_take(struct canvas *canvas, struct box box); /* this place is used */
 bool box_meets(struct box a, struct box b);
 

@@ -101,4 +101,5 @@ void figure_curves_draw(cairo_t *cairo, double width, double height, const struc
     draw_recruitment(&canvas, quarter(&canvas, width, height, 1, 0), curves);
     if (curves->staircase) draw_staircase(&canvas, quarter(&canvas, width, height, 0, 1), curves);
     if (curves->recovery) draw_recovery(&canvas, quarter(&canvas, width, height, 1, 1), curves);
+    canvas_foot(&canvas, height, style);
 }

@@ -12,6 +12,8 @@
 struct figure_style {
     bool dark;
     double scale; /* 1: 14 px text */
+    const char
+        *approval; /* at the foot: the NOT SIGNED text, or who signed; NULL: it is in sight elsewhere */
 };
 
 /* The score: pulses, activation, force on one time axis. Anything may be NULL/NAN where there is none. */

@@ -158,6 +158,7 @@ void figure_score_draw(cairo_t *cairo, double width, double height, const struct
         draw_trace(&canvas, &staves, score);
     else
         draw_target(&canvas, &staves.force, score, staves.per_s);
+    canvas_foot(&canvas, height, style);
     if (isnan(score->cursor_ms)) return;
     canvas_ink(&canvas, INK_VERMILION, 1);
     cairo_set_line_width(cairo, 1.5 * canvas.scale);

@@ -101,4 +101,5 @@ void figure_session_draw(cairo_t *cairo, double width, double height, const stru
                            means.area, INK_GREEN);
     }
     draw_remaining(&canvas, &rest, channel);
+    canvas_foot(&canvas, height, style);
 }
