@@ -2,6 +2,7 @@
  * recordings, with nothing typed; the plan's own pulses, cut to the device's counters, with those that were
  * lowered as they were. */
 #include "bridge/command/session_export.h"
+#include "bridge/command/plan_pulses.h"
 
 #include "bridge/record/read.h"
 #include "core/document/recordings.h"

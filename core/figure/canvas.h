@@ -48,6 +48,9 @@ void canvas_foot(struct canvas *canvas, double height, const struct figure_style
 void canvas_take(struct canvas *canvas, struct box box); /* this place is used */
 bool box_meets(struct box a, struct box b);
 
+/* For cairo's stream surfaces: appends to the struct text_out of core/document that is its context. */
+cairo_status_t canvas_stream(void *context, const unsigned char *data, unsigned length);
+
 /* An axis from `low` to `high` with ticks at 1, 2 or 5 times a power of ten (Heckbert 1990, "Nice numbers for
  * graph labels"). */
 struct axis {

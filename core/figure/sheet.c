@@ -3,6 +3,7 @@
 #include "core/figure/sheet.h"
 
 #include "core/document/document.h"
+#include "core/figure/canvas.h"
 #include <cairo-pdf.h>
 #include <pango/pangocairo.h>
 #include <stdio.h>
@@ -17,20 +18,6 @@ struct paper {
     double y;
     int number;
 };
-
-static cairo_status_t take(void *context, const unsigned char *data, unsigned length)
-{
-    struct text_out *out = context;
-    if (out->size + length + 1 > out->capacity) {
-        char *grown = realloc(out->data, 2 * (out->size + length + 1));
-        if (!grown) return CAIRO_STATUS_NO_MEMORY;
-        out->data = grown;
-        out->capacity = 2 * (out->size + length + 1);
-    }
-    memcpy(out->data + out->size, data, length);
-    out->size += length;
-    return CAIRO_STATUS_SUCCESS;
-}
 
 /* Draws wrapped text at (x, y) in a width; returns its height. draw false: only measures. */
 static double text(const struct paper *paper, const char *words, double x, double y, double width,
@@ -161,7 +148,7 @@ enum status sheet_write(const char *path, const struct sheet *sheet, const struc
 {
     struct text_out out = {0};
     cairo_surface_t *surface =
-        cairo_pdf_surface_create_for_stream(take, &out, page->width_pt, page->height_pt);
+        cairo_pdf_surface_create_for_stream(canvas_stream, &out, page->width_pt, page->height_pt);
     struct paper paper = {.cairo = cairo_create(surface), .page = page};
     cairo_pdf_surface_set_metadata(surface, CAIRO_PDF_METADATA_TITLE,
                                    sheet->lines ? sheet->line[0].text : "sheet");

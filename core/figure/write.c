@@ -1,14 +1,14 @@
 /* Figures into files. The goal of this code: the ending of the name says the form; nothing is overwritten
  * unasked. */
 #include "core/document/document.h"
-#include "core/figure/figure.h"
+#include "core/figure/canvas.h"
 
 #include <cairo-pdf.h>
 #include <cairo-svg.h>
 #include <stdlib.h>
 #include <string.h>
 
-static cairo_status_t take(void *context, const unsigned char *data, unsigned length)
+cairo_status_t canvas_stream(void *context, const unsigned char *data, unsigned length)
 {
     struct text_out *out = context;
     if (out->size + length + 1 > out->capacity) {
@@ -34,9 +34,9 @@ enum status figure_write(const char *path, double width, double height,
     if (png)
         surface = cairo_image_surface_create(CAIRO_FORMAT_ARGB32, (int)width, (int)height);
     else if (ending && strcmp(ending, ".svg") == 0)
-        surface = cairo_svg_surface_create_for_stream(take, &out, width, height);
+        surface = cairo_svg_surface_create_for_stream(canvas_stream, &out, width, height);
     else if (ending && strcmp(ending, ".pdf") == 0)
-        surface = cairo_pdf_surface_create_for_stream(take, &out, width * 0.75, height * 0.75);
+        surface = cairo_pdf_surface_create_for_stream(canvas_stream, &out, width * 0.75, height * 0.75);
     else
         return status_fail(why, STATUS_USAGE, "%s: a picture ends in .png, .svg or .pdf", path);
     cairo_t *cairo = cairo_create(surface);
@@ -44,7 +44,8 @@ enum status figure_write(const char *path, double width, double height,
     draw(cairo, width, height, context);
     cairo_status_t drawn = cairo_status(cairo);
     cairo_destroy(cairo);
-    if (png && drawn == CAIRO_STATUS_SUCCESS) drawn = cairo_surface_write_to_png_stream(surface, take, &out);
+    if (png && drawn == CAIRO_STATUS_SUCCESS)
+        drawn = cairo_surface_write_to_png_stream(surface, canvas_stream, &out);
     cairo_surface_finish(surface);
     if (drawn == CAIRO_STATUS_SUCCESS) drawn = cairo_surface_status(surface);
     cairo_surface_destroy(surface);

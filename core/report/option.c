@@ -209,7 +209,8 @@ enum status command_fail(const struct arguments *arguments, enum status status, 
 {
     va_list list;
     va_start(list, format);
-    fprintf(stderr, "%s %s: ", arguments->program->name, arguments->command->name);
+    fprintf(stderr, "%s%s%s: ", arguments->program->name, arguments->command->name[0] ? " " : "",
+            arguments->command->name);
     (void)vfprintf(stderr, format, list);
     fputc('\n', stderr);
     va_end(list);
