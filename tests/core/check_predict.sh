@@ -59,6 +59,14 @@ wants 2 "writes over nothing" "$program" pulses "$train" --profile "$person" --m
 cmp -s pulses.csv before.csv || { echo "an existing file was changed"; failed=1; }
 wants 0 "predict the pulses" "$program" predict "$person" --muscle left-quadriceps --pulses pulses.csv --exact --json
 
+# another current than that of a duration-exponential law: told by file, line and column, in a train and in a table
+printf 'format: pulsewright-train-1\ncontractions:\n  - {frequency_pps: 30, duration_us: 300, current_ma: 50, hold_ms: 500}\n' >other.yaml
+wants 4 "another current in a train" "$program" predict "$2/profiles/people/p-023.yaml" --muscle right-tibialis-anterior --train other.yaml
+has err.txt 'other.yaml:3:[0-9]*: contractions\[0\].current_ma: holds 50, may hold 45'
+printf 'time_ms,duration_us,current_ma\n0,300,45\n50,300,46\n' >other.csv
+wants 4 "another current in a table" "$program" predict "$2/profiles/people/p-023.yaml" --muscle right-tibialis-anterior --pulses other.csv
+has err.txt 'other.csv:3:3: current_ma: '
+
 wants 0 "curves" "$program" curves "$person" --muscle left-quadriceps -o curves.csv --json
 has out.txt '"force_frequency"'
 has curves.csv '^force-frequency dormant,'
