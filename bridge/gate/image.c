@@ -10,9 +10,10 @@
 #include <string.h>
 
 static enum status fill_identity(const struct stimulator *stimulator, const char *unit,
-                                 struct image_identity *identity, struct message *why)
+                                 enum signoff_kind kind, struct image_identity *identity, struct message *why)
 {
     const char *name = unit && unit[0] ? unit : stimulator->unit;
+    if (!name[0] && kind == SIGNOFF_REHEARSAL) name = stimulator->name; /* a twin answers to it */
     if (!name[0])
         return status_fail(
             why, STATUS_REFUSED,
@@ -101,7 +102,7 @@ enum status image_of_plan(const struct plan *plan, const char *unit, enum signof
     size_t count = 0;
     memset(image, 0, sizeof *image);
     enum status status = fill_header(plan, kind, image, why);
-    if (status == STATUS_OK) status = fill_identity(&plan->stimulator, unit, &image->identity, why);
+    if (status == STATUS_OK) status = fill_identity(&plan->stimulator, unit, kind, &image->identity, why);
     if (status == STATUS_OK) status = plan_segments(plan, &segments, &count, why);
     if (status != STATUS_OK) return status;
     const struct train_grid grid = stimulator_grid(&plan->stimulator);
