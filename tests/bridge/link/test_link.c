@@ -97,10 +97,14 @@ static void pseudo_terminal_carries_every_octet_and_is_not_shared(void **state)
 static void serial_transport_carries_every_octet_and_is_not_shared(void **state)
 {
     (void)state;
-    struct terminal terminal = open_terminal();
     struct link *link = NULL, *second = NULL;
     struct message why = {""};
     char folder[256], name[300], path[400], address[420];
+    if (access("/sys/class/tty", F_OK) != 0) { /* the library's look-up needs sysfs */
+        print_message("skipped: no /sys/class/tty on this machine\n");
+        skip();
+    }
+    struct terminal terminal = open_terminal();
     assert_non_null(getcwd(folder, sizeof folder));
     (void)snprintf(name, sizeof name, "%s/serial-%ld", folder, (long)getpid());
     assert_int_equal(symlink(terminal.name, name), 0);
