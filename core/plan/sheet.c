@@ -6,12 +6,27 @@
 #include "core/report/cautions.h"
 #include <math.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
+
+/* Room for the longest sheet there can be: every channel with all its blocks, figures and notes; every muscle
+ * with all its limits. */
+enum {
+    COMMON_LINES = 40, /* head, cautions, stop rules, approval */
+    CHANNEL_LINES = 8 + 2 * SHEET_BLOCKS_MAX,
+    LEDGER_LINES = DOSE_FIGURES + 8, /* a channel */
+    MUSCLE_LINES = 17
+};
+_Static_assert(COMMON_LINES + PLAN_NOTES_MAX + STIMULATOR_CHANNELS_MAX * (CHANNEL_LINES + LEDGER_LINES) <=
+                   SHEET_LINES_MAX,
+               "a plan's sheet is never cut off");
+_Static_assert(COMMON_LINES + PROFILE_MUSCLES_MAX * MUSCLE_LINES <= SHEET_LINES_MAX, "nor a profile's");
 
 __attribute__((format(printf, 3, 4))) static void add(struct sheet *sheet, enum sheet_style style,
                                                       const char *format, ...)
 {
-    if (sheet->lines == SHEET_LINES_MAX) return;
+    if (sheet->lines == SHEET_LINES_MAX)
+        abort(); /* never a sheet with its end cut off: it is what gets signed */
     struct sheet_line *line = &sheet->line[sheet->lines++];
     va_list list;
     line->style = style;

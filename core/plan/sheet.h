@@ -6,7 +6,7 @@
 #include "core/document/profile.h"
 
 enum sheet_style { SHEET_VERDICT, SHEET_HEADING, SHEET_TEXT, SHEET_ROW, SHEET_SMALL };
-enum { SHEET_TEXT_SIZE = 512, SHEET_LINES_MAX = 200, SHEET_BLOCKS_MAX = 14 };
+enum { SHEET_TEXT_SIZE = 512, SHEET_LINES_MAX = 640, SHEET_BLOCKS_MAX = 14 };
 struct sheet_line {
     enum sheet_style style;
     char text[SHEET_TEXT_SIZE]; /* SHEET_ROW: columns between tabs */

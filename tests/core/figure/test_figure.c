@@ -181,6 +181,50 @@ static void sheet_says_it_in_words(void **state)
     profile_free(&profile);
 }
 
+/* Every channel full of blocks, figures and attention: the cautions and the place to sign still stand at its
+ * end. */
+static void the_longest_sheet_keeps_its_cautions_and_its_end(void **state)
+{
+    (void)state;
+    struct plan *plan = calloc(1, sizeof *plan);
+    struct sheet *sheet = malloc(sizeof *sheet);
+    plan->channels = STIMULATOR_CHANNELS_MAX;
+    plan->channel = calloc(plan->channels, sizeof *plan->channel);
+    plan->notes = PLAN_NOTES_MAX;
+    struct plan_block *block = calloc(2 * SHEET_BLOCKS_MAX, sizeof *block);
+    for (unsigned b = 0; b < 2 * SHEET_BLOCKS_MAX; b++)
+        block[b] =
+            (struct plan_block){.first = b + 1, .count = 1, .settings = {.frequency_pps = 30, .opening = 1}};
+    for (size_t c = 0; c < plan->channels; c++) {
+        plan->channel[c].channel = (unsigned)c + 1;
+        plan->channel[c].demand.contractions = 9;
+        plan->channel[c].blocks = 2 * SHEET_BLOCKS_MAX;
+        plan->channel[c].block = block;
+    }
+    plan->ledger.figures = plan->channels * (DOSE_FIGURES - 1);
+    plan->ledger.figure = calloc(plan->ledger.figures, sizeof *plan->ledger.figure);
+    plan->ledger.shown = plan->channels * 5;
+    plan->ledger.shown_figure = calloc(plan->ledger.shown, sizeof *plan->ledger.shown_figure);
+    for (size_t i = 0; i < plan->ledger.shown; i++) plan->ledger.shown_figure[i].attention = true;
+    sheet_of_plan(plan, NOT_SIGNED_TEXT, sheet);
+    size_t cautions_found = 0;
+    bool place_to_sign = false;
+    for (size_t i = 0; i < sheet->lines; i++) {
+        for (size_t c = 0; c < cautions_count; c++)
+            cautions_found += strstr(sheet->line[i].text, cautions[c].text) != NULL;
+        place_to_sign |= strstr(sheet->line[i].text, "signature") != NULL;
+    }
+    assert_int_equal(cautions_found, cautions_count);
+    assert_true(place_to_sign);
+    assert_true(sheet->lines > 400);
+    free(plan->ledger.figure);
+    free(plan->ledger.shown_figure);
+    free(plan->channel);
+    free(block);
+    free(plan);
+    free(sheet);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -190,6 +234,7 @@ int main(void)
         cmocka_unit_test(strokes_are_as_high_as_their_current),
         cmocka_unit_test(file_is_what_its_ending_says_and_nothing_is_overwritten),
         cmocka_unit_test(sheet_says_it_in_words),
+        cmocka_unit_test(the_longest_sheet_keeps_its_cautions_and_its_end),
     };
     return cmocka_run_group_tests(tests, NULL, NULL) != 0;
 }
