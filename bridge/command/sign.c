@@ -89,7 +89,7 @@ static enum status add_channels(struct signoff *signoff, const struct plan *plan
 static enum status add_plan(struct signing *signing, size_t number, const char *unit, struct message *why)
 {
     struct signoff *signoff = &signing->signoff;
-    const struct plan *plan = &signing->plans.plan[number];
+    struct plan *plan = &signing->plans.plan[number];
     struct image image;
     struct ledger ledger;
     if (number && strcmp(plan->person, signoff->person) != 0)
@@ -98,7 +98,8 @@ static enum status add_plan(struct signing *signing, size_t number, const char *
     enum status status = plan_ledger(plan, &ledger, why);
     if (status != STATUS_OK) return status;
     const bool within = ledger.within;
-    ledger_free(&ledger);
+    ledger_free(&plan->ledger);
+    plan->ledger = ledger; /* the sheet shows what was checked, not the document's copy */
     if (!within)
         return status_fail(why, STATUS_REFUSED, "%s breaks a limit: see `pulsewright check`",
                            signing->plans.bytes[number].path);
@@ -188,13 +189,8 @@ static enum status take_key(struct signing *signing, struct secret_key **key, st
         return key_make(key, why);
     }
     struct site *site = calloc(1, sizeof *site);
-#ifdef PULSEWRIGHT_TEST_BUILD
-    const bool strict = false;
-#else
-    const bool strict = true;
-#endif
     enum status status =
-        site ? site_load(site_folder(), strict, site, why) : status_fail(why, STATUS_INTERNAL, "no memory");
+        site ? site_load_installed(site, why) : status_fail(why, STATUS_INTERNAL, "no memory");
     const struct signer *signer = status == STATUS_OK ? site_signer(site, as) : NULL;
     if (status == STATUS_OK && !signer)
         status = status_fail(why, STATUS_REFUSED, "%s is no signer of this site", as);
@@ -324,7 +320,7 @@ static enum status run_verify(const struct arguments *arguments)
     struct message no_site = {""};
     enum status status =
         file && site && plans ? signoff_read(arguments->positional[0], file, &why) : STATUS_INTERNAL;
-    const bool has_site = status == STATUS_OK && site_load(site_folder(), false, site, &no_site) == STATUS_OK;
+    const bool has_site = status == STATUS_OK && site_load_installed(site, &no_site) == STATUS_OK;
     for (int i = 1; status == STATUS_OK && i < arguments->positionals; i++)
         status = plans_add(plans, arguments->positional[i], arguments, &why);
     for (size_t p = 0; status == STATUS_OK && p < plans->plans; p++)

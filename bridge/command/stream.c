@@ -112,20 +112,20 @@ static void ask(struct stream *stream, const char *text)
     fprintf(stderr, "%s\n", text);
 }
 
-/* The gate, once the device has said what it is; then the record; both before anything is armed. */
+/* The gate, once the device has said what it is; then the record; then the use is written down: a record
+ * that can not be written costs no session. All before anything is armed. */
 static bool pass_gate(struct stream *stream, struct host *host)
 {
     struct gate_request request = stream->request;
     char state[200];
     request.unit_said = (const char *)host_identity(host)->identity;
     request.device_is_twin = host_identity(host)->twin;
-    if (gate_may_start(&request, stream->site, gate_clock_s(), true, &stream->why) != STATUS_OK) {
+    if (gate_may_start(&request, stream->site, gate_clock_s(), false, &stream->why) != STATUS_OK) {
         stream->status = STATUS_REFUSED;
         return false;
     }
     gate_state_text(stream->request.signoff, stream->request.rehearse, state, sizeof state);
     fprintf(stderr, "%s\n", state);
-    if (!stream->record_path) return true;
     const struct record_session session = {
         .person = stream->plan->person,
         .device = request.unit_said,
@@ -136,9 +136,20 @@ static bool pass_gate(struct stream *stream, struct host *host)
         .plan_size = stream->bytes->size,
         .root = stream->image.root,
         .begun_s = gate_clock_s()};
-    if (record_begin(stream->record_path, &session, &stream->record, &stream->why) == STATUS_OK) return true;
-    stream->status = STATUS_REFUSED;
-    return false;
+    if (stream->record_path)
+        stream->status = record_begin(stream->record_path, &session, &stream->record, &stream->why);
+    if (stream->status == STATUS_OK)
+        stream->status = gate_may_start(&request, stream->site, gate_clock_s(), true, &stream->why);
+    return stream->status == STATUS_OK;
+}
+
+/* From here on 30 minutes are left to resume, or nothing is left to resume. */
+static void note_end(const struct stream *stream, const struct host *host)
+{
+    struct message why = {""};
+    if (stream->passed && gate_note_end(&stream->request, stream->site, gate_clock_s(),
+                                        host_phase(host) == HOST_FINISHED, &why) != STATUS_OK)
+        fprintf(stderr, "%s\n", why.text);
 }
 
 /* Three separate presses, or none in a rehearsal. */
@@ -261,6 +272,7 @@ static enum status run_host(struct stream *stream, struct link *link, struct mes
     if (keys) (void)tcsetattr(0, TCSANOW, &before);
     if (isatty(2)) fputc('\n', stderr);
     end_record(stream, host);
+    note_end(stream, host);
     if (host_phase(host) == HOST_FAILED) keep_flight(stream, host);
     if (stream->status == STATUS_OK)
         stream->status = host_phase(host) == HOST_FAILED    ? STATUS_DEVICE
@@ -358,13 +370,7 @@ static enum status prepare(struct stream *stream, struct signoff_file *file, str
         status = signoff_read(argument(arguments, "--signoff"), file, why);
         if (status == STATUS_OK) stream->request.signoff = &file->signoff;
         struct message no_site = {""};
-#ifdef PULSEWRIGHT_TEST_BUILD
-        const bool strict = false;
-#else
-        const bool strict = true;
-#endif
-        if (status == STATUS_OK &&
-            site_load(site_folder(), strict, stream->site_memory, &no_site) == STATUS_OK)
+        if (status == STATUS_OK && site_load_installed(stream->site_memory, &no_site) == STATUS_OK)
             stream->site = stream->site_memory;
         if (status == STATUS_OK && !stream->site && file->signoff.kind == SIGNOFF_CLINICAL)
             status = status_fail(why, STATUS_REFUSED, "%s", no_site.text);

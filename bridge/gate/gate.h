@@ -32,9 +32,14 @@ struct gate_request {
     bool resume;                   /* after a stop: counts on `resumes` */
 };
 /* Every check in one pass at wall-clock time now_s; all reasons that fail are in `why`, joined by "; ". Where
- * it may start and `consume`, the use is written and synced before the answer. Rehearsals are not counted. */
+ * it may start and `consume`, the use is written and synced before the answer (counted and written under one
+ * lock); then device and person have to be there. Rehearsals are not counted. */
 enum status gate_may_start(const struct gate_request *request, const struct site *site, uint64_t now_s,
                            bool consume, struct message *why);
+/* Notes that what was started has ended: a stopped image may be resumed within 30 minutes of that, a finished
+ * one not. Without it the time of the start counts. Rehearsals are not noted. */
+enum status gate_note_end(const struct gate_request *request, const struct site *site, uint64_t now_s,
+                          bool finished, struct message *why);
 /* The wall clock, s since 1970. */
 uint64_t gate_clock_s(void);
 /* "signed by S-2 (clinician) for P-017 until 2026-12-02 13:05 UTC", "REHEARSAL, TWIN ONLY" or the NOT SIGNED

@@ -169,16 +169,17 @@ enum status key_load(const char *path, const char *passphrase, struct secret_key
     return status;
 }
 
-/* Takes one line, octet by octet, so that nothing of it stays in a buffer of the library. */
+/* Takes one line, octet by octet, so that nothing of it stays in a buffer of the library. One that is too
+ * long gives none: cut short it would box a key under less than was typed. */
 static bool read_line(int from, char *line)
 {
     size_t count = 0;
     char octet = 0;
-    while (count < PASSPHRASE_MAX - 1) {
+    for (;;) {
         const ssize_t got = read(from, &octet, 1);
         if (got < 0 && errno == EINTR) continue;
-        if (got <= 0) break;
-        if (octet == '\n') break;
+        if (got <= 0 || octet == '\n') break;
+        if (count == PASSPHRASE_MAX - 1) return false;
         line[count++] = octet;
     }
     line[count] = '\0';
@@ -210,8 +211,10 @@ enum status passphrase_read(int from, const char *prompt, char **passphrase, str
         return STATUS_OK;
     }
     sodium_free(line);
-    return status_fail(why, STATUS_USAGE,
-                       "no passphrase: there is no terminal, and --passphrase-fd gave none");
+    return status_fail(
+        why, STATUS_USAGE,
+        "no passphrase: there is no terminal, --passphrase-fd gave none, or it is longer than %d octets",
+        PASSPHRASE_MAX - 1);
 }
 
 void passphrase_free(char *passphrase)

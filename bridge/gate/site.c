@@ -165,6 +165,16 @@ enum status site_load(const char *folder, bool strict, struct site *site, struct
     return status;
 }
 
+enum status site_load_installed(struct site *site, struct message *why)
+{
+#ifdef PULSEWRIGHT_TEST_BUILD
+    const bool strict = false;
+#else
+    const bool strict = true;
+#endif
+    return site_load(site_folder(), strict, site, why);
+}
+
 enum status site_save(struct site *site, const struct secret_key *site_key, struct message *why)
 {
     struct text_out out = {0};

@@ -37,6 +37,13 @@ refused 3 "not among those that were signed" "$bridge" stream other.yaml $train 
 refused 3 "never plays on a real port" "$bridge" stream train.yaml $train --to serial:/dev/ttyS0 --rehearse
 refused 2 "one of --signoff FILE and --rehearse" "$bridge" stream train.yaml $train --to twin:
 refused 5 "can not be opened" "$bridge" stream train.yaml $train --to pty:/dev/pts/none --rehearse
+# a ledger that was edited in the document is not what the signer is shown
+"$core" plan "$person" "$source/profiles/demands/short-hold.yaml" --stimulator "$stimulator" -o plan.yaml --ensemble 0 >/dev/null 2>&1 || [ $? -eq 3 ]
+sed 's/figure: rms, value: [0-9.]*/figure: rms, value: 0.001/' plan.yaml >forged.yaml
+cmp -s plan.yaml forged.yaml && fail "the plan holds no r.m.s. figure to forge"
+"$bridge" sign plan.yaml --as S-2 -o true.signoff --rehearsal | grep "r.m.s. current over" >true.rms
+"$bridge" sign forged.yaml --as S-2 -o forged.signoff --rehearsal | grep "r.m.s. current over" >forged.rms
+cmp -s true.rms forged.rms || { cat forged.rms; fail "the sheet shows a forged dose"; }
 cp ok.signoff bad.signoff
 printf 'x' | dd of=bad.signoff bs=1 seek=200 conv=notrunc 2>/dev/null
 refused 3 "changed after it was signed" "$bridge" stream train.yaml $train --to twin: --signoff bad.signoff

@@ -11,6 +11,7 @@
 #include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
+#include <sys/wait.h>
 #include <unistd.h>
 
 enum { NOW_S = 1900000000 };
@@ -189,7 +190,134 @@ static void sessions_and_resumes_are_used_up_and_the_clock_never_goes_back(void 
     const struct signoff late = approved();
     request = request_of(&late);
     request.resume = true;
-    refused(&request, NOW_S + 600, "within 30 minutes");
+    refused(&request, NOW_S + 600, "nothing to resume");
+}
+
+static struct image another_image(uint8_t kind)
+{
+    struct image other = image;
+    other.header.kind = kind;
+    memset(other.root, 0xA5, sizeof other.root);
+    return other;
+}
+
+static void only_what_was_begun_and_has_not_finished_is_resumed_by_its_stop(void **state)
+{
+    (void)state;
+    struct signoff signoff = approved();
+    signoff.expires_s = NOW_S + 86400;
+    const struct image other = another_image(IMAGE_TIMED);
+    signoff.images = 2;
+    signoff.resumes = 3;
+    signoff.image[1] = signoff.image[0];
+    memcpy(signoff.image[1].root, other.root, IMAGE_ROOT_SIZE);
+    struct gate_request request = request_of(&signoff);
+    assert_status(gate_may_start(&request, &site, NOW_S + 1000, true, &why), STATUS_OK, &why);
+    request.resume = true;
+    request.image = &other;
+    refused(&request, NOW_S + 1010, "nothing to resume");
+    request.image = &image;
+    refused(&request, NOW_S + 1000 + 1801, "within 30 minutes"); /* no stop was written: the start counts */
+    assert_status(gate_note_end(&request, &site, NOW_S + 1000 + 2000, false, &why), STATUS_OK, &why);
+    assert_status(gate_may_start(&request, &site, NOW_S + 1000 + 3500, true, &why), STATUS_OK, &why);
+    assert_status(gate_note_end(&request, &site, NOW_S + 1000 + 3550, true, &why), STATUS_OK, &why);
+    refused(&request, NOW_S + 1000 + 3560, "or they finished");
+}
+
+static void a_held_image_uses_no_session(void **state)
+{
+    (void)state;
+    struct signoff signoff = approved();
+    signoff.expires_s = NOW_S + 86400;
+    const struct image held = another_image(IMAGE_HELD);
+    signoff.images = 2;
+    signoff.sessions = 1;
+    signoff.starts_in_all = 3;
+    signoff.image[1] = signoff.image[0];
+    memcpy(signoff.image[1].root, held.root, IMAGE_ROOT_SIZE);
+    struct gate_request request = request_of(&signoff);
+    request.image = &held;
+    assert_status(gate_may_start(&request, &site, NOW_S + 5000, true, &why), STATUS_OK, &why);
+    assert_status(gate_may_start(&request, &site, NOW_S + 5001, true, &why), STATUS_OK, &why);
+    refused(&request, NOW_S + 5002, "starts of this plan are used up");
+    request.image = &image;
+    assert_status(gate_may_start(&request, &site, NOW_S + 5003, true, &why), STATUS_OK, &why);
+    refused(&request, NOW_S + 5004, "session is used up");
+    assert_non_null(strstr(why.text, "3 starts are used up"));
+}
+
+static void nothing_starts_without_a_device_and_a_person(void **state)
+{
+    (void)state;
+    const struct signoff signoff = approved();
+    struct gate_request request = request_of(&signoff);
+    request.person = request.unit_said = NULL;
+    assert_status(gate_may_start(&request, &site, NOW_S + 6, false, &why), STATUS_REFUSED,
+                  &why); /* the clock */
+    assert_status(gate_may_start(&request, &site, NOW_S + 5100, false, &why), STATUS_REFUSED, &why);
+    assert_null(strstr(why.text, "typed again")); /* verify asks for neither */
+    assert_int_equal(gate_may_start(&request, &site, NOW_S + 5100, true, &why), STATUS_REFUSED);
+    assert_non_null(strstr(why.text, "typed again"));
+    assert_non_null(strstr(why.text, "which one it is"));
+}
+
+/* Every octet, one bit each; and a line less. */
+static void a_line_of_uses_that_was_changed_or_taken_out_lets_nothing_start(void **state)
+{
+    (void)state;
+    struct signoff signoff = approved();
+    const struct gate_request request = request_of(&signoff);
+    struct document_bytes bytes;
+    char path[400];
+    signoff.expires_s = NOW_S + 86400;
+    (void)snprintf(path, sizeof path, "%s/uses", folder);
+    assert_status(document_read_bytes(path, &bytes, &why), STATUS_OK, &why);
+    assert_status(gate_may_start(&request, &site, NOW_S + 6000, false, &why), STATUS_OK, &why);
+    for (size_t at = 0; at < bytes.size; at++) {
+        bytes.data[at] ^= 1;
+        FILE *out = fopen(path, "w");
+        assert_int_equal(fwrite(bytes.data, 1, bytes.size, out), bytes.size);
+        fclose(out);
+        bytes.data[at] ^= 1;
+        assert_int_equal(gate_may_start(&request, &site, NOW_S + 6000, true, &why), STATUS_REFUSED);
+        assert_non_null(strstr(why.text, "is damaged"));
+    }
+    const size_t first = (size_t)(strchr(bytes.data, '\n') + 1 - bytes.data);
+    FILE *out = fopen(path, "w"); /* the first line taken out */
+    assert_int_equal(fwrite(bytes.data + first, 1, bytes.size - first, out), bytes.size - first);
+    fclose(out);
+    assert_int_equal(gate_may_start(&request, &site, NOW_S + 6000, true, &why), STATUS_REFUSED);
+    assert_non_null(strstr(why.text, "line 1 is damaged"));
+    out = fopen(path, "w");
+    assert_int_equal(fwrite(bytes.data, 1, bytes.size, out), bytes.size);
+    fclose(out);
+    document_bytes_free(&bytes);
+}
+
+/* Eight programs ask at the same moment for one session: one gets it. */
+static void programs_at_once_share_the_sessions(void **state)
+{
+    (void)state;
+    enum { PROGRAMS = 8 };
+    struct signoff signoff = approved();
+    signoff.expires_s = NOW_S + 86400;
+    signoff.sessions = signoff.starts_in_all = 1;
+    const struct gate_request request = request_of(&signoff);
+    pid_t child[PROGRAMS];
+    unsigned started = 0;
+    for (unsigned i = 0; i < PROGRAMS; i++) {
+        child[i] = fork();
+        assert_true(child[i] >= 0);
+        if (child[i] == 0)
+            _exit(gate_may_start(&request, &site, NOW_S + 5500, true, &why) == STATUS_OK ? 7 : 3);
+    }
+    for (unsigned i = 0; i < PROGRAMS; i++) {
+        int way = 0;
+        assert_int_equal(waitpid(child[i], &way, 0), child[i]);
+        assert_true(WIFEXITED(way) && (WEXITSTATUS(way) == 7 || WEXITSTATUS(way) == 3));
+        started += WEXITSTATUS(way) == 7 ? 1 : 0;
+    }
+    assert_int_equal(started, 1);
 }
 
 static void rehearsals_never_reach_a_real_port_or_a_real_device(void **state)
@@ -418,6 +546,11 @@ int main(void)
         cmocka_unit_test(signer_has_to_be_listed_with_this_key_and_a_role_that_may),
         cmocka_unit_test(all_reasons_are_told_in_one_pass),
         cmocka_unit_test(sessions_and_resumes_are_used_up_and_the_clock_never_goes_back),
+        cmocka_unit_test(only_what_was_begun_and_has_not_finished_is_resumed_by_its_stop),
+        cmocka_unit_test(a_held_image_uses_no_session),
+        cmocka_unit_test(nothing_starts_without_a_device_and_a_person),
+        cmocka_unit_test(programs_at_once_share_the_sessions),
+        cmocka_unit_test(a_line_of_uses_that_was_changed_or_taken_out_lets_nothing_start),
         cmocka_unit_test(rehearsals_never_reach_a_real_port_or_a_real_device),
         cmocka_unit_test(any_flipped_octet_of_a_signoff_is_refused),
         cmocka_unit_test(any_flipped_octet_of_the_list_of_signers_is_refused),
