@@ -156,7 +156,7 @@ static const struct field demand_fields[] = {
      .offset = 0,
      .of = &stop_if,
      .has = offsetof(DM, has_stop_if),
-     .help = "when streaming stops by itself"},
+     .help = "when to stop; printed on the sheet, not yet acted on by the host"},
     LAST};
 
 static void begin_demand(void *object)

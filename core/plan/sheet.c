@@ -172,8 +172,8 @@ static void add_stop_rules(struct sheet *sheet, const struct plan *plan)
     add(sheet, SHEET_HEADING, "Stop");
     if (plan->demand.has_stop_if)
         add(sheet, SHEET_TEXT,
-            "Streaming stops by itself where %u contractions in a row lie %g %% above or %g %% below the "
-            "prediction.",
+            "Stop by hand where %u contractions in a row lie %g %% above or %g %% below the prediction: this "
+            "version does not do it by itself.",
             plan->demand.stop_if.contractions, plan->demand.stop_if.over_percent,
             plan->demand.stop_if.under_percent);
     add(sheet, SHEET_TEXT,
